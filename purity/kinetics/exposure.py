@@ -16,12 +16,16 @@ Arrays carry the draws on their last axis, of length N, or 1 where all draws are
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
+
+#: Smallest content whose logarithm is taken: less than an atom in a lot of any size.
+FLOOR = 1e-30
 
 
 @dataclass(frozen=True, slots=True)
@@ -149,3 +153,119 @@ def ln_at(curve: Curve, T: Array | float) -> Array:
         draws = np.arange(T.shape[-1]) if curve.ln.shape[-1] > 1 else np.zeros(T.shape[-1], dtype=int)
         low, high = curve.ln[..., left, draws], curve.ln[..., left + 1, draws]
     return np.asarray((1 - weight) * low + weight * high)
+
+
+def activity_at(carrier: Carrier, T: Array | float) -> Array:
+    """Activity of a carrier on the far side of its contact, shape (N,) or (1,)."""
+    activity = carrier.activity
+    return (
+        at(activity, T) if isinstance(activity, Curve) else np.atleast_1d(np.asarray(activity, dtype=float))
+    )
+
+
+def split(carrier: Carrier, x: Array, T: Array | float) -> tuple[Array, Array]:
+    """See a carrier as a linear contact of each impurity, the other contents held.
+
+    Parameters
+    ----------
+    carrier : Carrier
+    x : (I, N) array
+        Contents at the surface, mol per mol of host.
+    T : float or (N,) array
+        Temperature, K.
+
+    Returns
+    -------
+    ceiling : (I, N) array
+        Content in equilibrium with the carrier, (K a / prod_j x_j^nu_j)^(1/nu_i); 0 where nu_i is 0.
+    exchange : (I, N) array
+        mol m-2 s-1 per unit content: the secant of the contact-side law between x and the ceiling,
+        nu_i g (a - a_s) / (x* - x). Infinite where the contact side has no resistance, 0 where nu_i is 0.
+    """
+    shape = np.broadcast_shapes(x.shape, (len(carrier.nu), np.shape(T)[-1] if np.ndim(T) else 1))
+    nu = carrier.nu[:, None]
+    ln_x = np.log(np.maximum(x, FLOOR))
+    others = np.sum(nu * ln_x, axis=0) - nu * ln_x - ln_at(carrier.ln_k, T)
+    activity = activity_at(carrier, T)
+    power = np.where(nu > 0, nu, 1.0)
+    with np.errstate(divide="ignore"):
+        ceiling = np.exp((np.log(activity) - others) / power)
+    if carrier.conductance is None:
+        slope = np.full(shape, np.inf)
+    else:
+        slope = nu * at(carrier.conductance, T) * np.exp(others) * _secant(ceiling, x, power)
+    acts = np.broadcast_to(nu > 0, shape)
+    return np.where(acts, ceiling, 0.0), np.where(acts, slope, 0.0)
+
+
+def _secant(upper: Array, lower: Array, power: Array) -> Array:
+    """Return (u^n - l^n) / (u - l), without cancellation where u and l meet."""
+    large = np.maximum(np.maximum(upper, lower), FLOOR)
+    ratio = np.minimum(upper, lower) / large
+    gap = np.maximum(1 - ratio, 1e-8)
+    rise = np.where(ratio > 1 - 1e-8, power, (1 - ratio**power) / gap)
+    return np.asarray(large ** (power - 1) * rise)
+
+
+def select(exposure: Exposure, draws: NDArray[np.int64]) -> Exposure:
+    """Take some draws of an exposure, in the order and as often as given."""
+    return Exposure(
+        exposure.contact,
+        _draws(exposure.area, draws),
+        _curve(exposure.exchange, draws),
+        tuple(_carrier(carrier, draws) for carrier in exposure.carriers),
+        tuple(Skin(skin.name, skin.nu, _curve(skin.ln_k, draws)) for skin in exposure.skins),
+        tuple(
+            Film(film.name, film.nu, film.law, tuple(_curve(curve, draws) for curve in film.parameters))
+            for film in exposure.films
+        ),
+    )
+
+
+def scale(
+    exposure: Exposure, exchange: Array, conductance: Mapping[str, Array], inventory: Array
+) -> Exposure:
+    """Multiply rates and amounts of an exposure.
+
+    Parameters
+    ----------
+    exposure : Exposure
+    exchange : (N,) array
+        ln of the factor of every exchange.
+    conductance : mapping of str to (N,) array
+        ln of the factor of the conductances, by the limit that they stand for.
+    inventory : (N,) array
+        ln of the factor of every inventory.
+    """
+    none = np.zeros(1)
+    carriers = tuple(
+        replace(
+            carrier,
+            conductance=carrier.conductance
+            and Curve(carrier.conductance.T, carrier.conductance.ln + conductance.get(carrier.limit, none)),
+            inventory=None if carrier.inventory is None else carrier.inventory * np.exp(inventory),
+        )
+        for carrier in exposure.carriers
+    )
+    k = exposure.exchange
+    return replace(exposure, exchange=Curve(k.T, k.ln + exchange), carriers=carriers)
+
+
+def _draws(values: Array, draws: NDArray[np.int64]) -> Array:
+    values = np.atleast_1d(values)
+    return values if values.shape[-1] == 1 else np.asarray(values[..., draws])
+
+
+def _curve(curve: Curve, draws: NDArray[np.int64]) -> Curve:
+    return Curve(curve.T, _draws(curve.ln, draws))
+
+
+def _carrier(carrier: Carrier, draws: NDArray[np.int64]) -> Carrier:
+    activity = carrier.activity
+    return replace(
+        carrier,
+        ln_k=_curve(carrier.ln_k, draws),
+        activity=_curve(activity, draws) if isinstance(activity, Curve) else _draws(activity, draws),
+        conductance=carrier.conductance and _curve(carrier.conductance, draws),
+        inventory=None if carrier.inventory is None else _draws(carrier.inventory, draws),
+    )
