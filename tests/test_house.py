@@ -28,17 +28,31 @@ BELOW_ASSESS = (
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
     "constants": set(),
-    "quantities": NUMBERS,
+    "quantities": NUMBERS | {"scenario"},
     "composition": NUMBERS,
     "scenario": {"errors"},
-    "database": NUMBERS | {"quantities", "scenario"},
+    "tables": NUMBERS,
+    "bounds": NUMBERS | {"tables"},
+    "table_files": NUMBERS | {"tables", "bounds"},
+    "database": NUMBERS | {"quantities", "scenario", "tables", "table_files"},
+    "catalogue": NUMBERS | {"database"},
     "draws": {"scenario"},
     "kinetics.exposure": NUMBERS,
     "kinetics.arrhenius": NUMBERS | {"kinetics.exposure"},
     "kinetics.schedule": NUMBERS | {"kinetics.exposure", "kinetics.arrhenius"},
     "kinetics.transfer": NUMBERS,
+    "kinetics.particles": NUMBERS,
+    "kinetics.casting": NUMBERS,
+    "kinetics.laplace": NUMBERS,
+    "kinetics.modes": NUMBERS,
+    "kinetics.surface": NUMBERS | KINETICS_BASE,
+    "kinetics.pieces": NUMBERS
+    | KINETICS_BASE
+    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.surface"},
     "kinetics.bath": NUMBERS | KINETICS_BASE | {"scenario"},
-    "kinetics.body": NUMBERS | KINETICS_BASE | {"scenario"},
+    "kinetics.body": NUMBERS
+    | KINETICS_BASE
+    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.surface", "kinetics.pieces"},
     "kinetics.films": NUMBERS | KINETICS_BASE | {"scenario"},
     "kinetics.advance": NUMBERS | {"scenario", "kinetics.*"},
     "driving_force.solution": NUMBERS,
@@ -51,7 +65,8 @@ ALLOWED: dict[str, set[str]] = {
     "contacts.*": BELOW_CONTACTS
     | DRIVING_FORCE
     | CONTACTS
-    | {"kinetics.exposure", "kinetics.transfer", "kinetics.films", "kinetics.arrhenius"},
+    | {"kinetics.exposure", "kinetics.transfer", "kinetics.films", "kinetics.arrhenius"}
+    | {"kinetics.particles", "kinetics.casting"},
     "contacts": BELOW_CONTACTS | DRIVING_FORCE | CONTACTS | {"kinetics.exposure"},
     "result": {"errors"},
     "uncertainty": {"result"},
