@@ -1,201 +1,62 @@
 """The library of records: tables with a source for every row, and a user's own tables over them.
 
-Every table is a CSV file in ``purity/data`` (or in a user's folder). All tables carry ``source`` (a key
-of ``sources.csv``), ``where`` (page, table, file), ``origin`` (looked-up, memory, derived, computed,
-estimate) and ``note``; most carry a temperature range and a spread. Units stand in column names.
+Every table is a CSV file in ``purity/data`` (or in a user's folder); :mod:`purity.tables` has their
+form and their rules. A library is immutable and passed as an argument; there is none at module level.
+
+Rank of rivals: rank 1 is used. Where several sources give one quantity the order is that of a row
+marked as preferred by the compiler, then looked-up before derived or computed, memory and estimate,
+then the narrower spread, then the range nearer the usual process temperature. ``prefer`` names
+sources that go before all ranks.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from difflib import get_close_matches
+from functools import lru_cache
+from hashlib import blake2b
 from pathlib import Path
 from typing import Literal
 
-import numpy as np
-from numpy.typing import NDArray
+from purity.constants import ATM
+from purity.errors import DataError, Fault, OutOfRangeError
+from purity.scenario import Atmosphere, Given, Material, Still, exact
+from purity.table_files import DATA, check, file_hashes, read_folder, verify
+from purity.tables import (
+    TABLES,
+    Record,
+    Table,
+    ln_value,
+    outside,
+    parameters,
+    quantity_name,
+    spread_at,
+)
 
-Array = NDArray[np.float64]
+__all__ = [
+    "DATA",
+    "TABLES",
+    "Found",
+    "Gap",
+    "Library",
+    "Record",
+    "Table",
+    "check",
+    "file_hashes",
+    "ln_value",
+    "load",
+    "outside",
+    "parameters",
+    "phase_at",
+    "spread_at",
+    "verify",
+]
 
 How = Literal["measured", "estimate", "yours"]
 
-
-@dataclass(frozen=True, slots=True)
-class Table:
-    """Form of one table.
-
-    Parameters
-    ----------
-    key : tuple of str
-        Columns that name what is measured; together with `name` they make the quantity.
-    numbers : tuple of str
-        Columns that must hold numbers.
-    spread : str
-        Column of the one-sigma spread: ``spread_ln`` (in ln), ``spread_factor`` (multiplicative),
-        ``spread_J_per_mol``, or "" where the table has none.
-    ranged : bool
-        Has ``T_min_K`` and ``T_max_K``.
-    law : {"arrhenius", "inverse", "constant", ""}
-        How :func:`ln_value` reads `numbers`: ln y = ln D0 - Q/RT; ln y = A/T + B; ln y = ln value.
-    text : tuple of str
-        Further columns that hold words.
-    optional : tuple of str
-        Number columns that may be blank.
-    """
-
-    key: tuple[str, ...]
-    numbers: tuple[str, ...]
-    spread: str = ""
-    ranged: bool = False
-    law: str = ""
-    text: tuple[str, ...] = ()
-    optional: tuple[str, ...] = ()
-
-
-#: Every table of the library. `rank` (integer, 1 first) orders rival rows of one quantity.
-TABLES: Mapping[str, Table] = {
-    "elements": Table(("element",), ("molar_mass_g_per_mol",), text=("name",)),
-    # solid, liquid: density rho = density - slope (T - T_ref); viscosity ln eta = A + B/T in Pa s
-    "hosts": Table(
-        ("host", "phase"),
-        ("density_kg_per_m3", "density_slope_kg_per_m3_K", "T_ref_K", "viscosity_A_ln_Pa_s", "viscosity_B_K"),
-        spread="spread_ln",
-        ranged=True,
-        optional=("viscosity_A_ln_Pa_s", "viscosity_B_K"),
-    ),
-    "transitions": Table(
-        ("element", "kind", "to_state"),
-        ("T_K", "dH_J_per_mol"),
-        text=("from_state",),
-        optional=("dH_J_per_mol",),
-    ),
-    # state: solid, liquid, gas; label tells polymorphs and temperature pieces apart
-    "gibbs": Table(
-        ("formula", "state", "label"),
-        (
-            "H298_J_per_mol",
-            "S298_J_per_mol_K",
-            "a_J_per_mol_K",
-            "b_J_per_mol_K2",
-            "c_J_K_per_mol",
-            "d_J_per_mol_K3",
-            "fit_error_J_per_mol",
-        ),
-        spread="spread_J_per_mol",
-        ranged=True,
-        text=("class",),
-    ),
-    # ln gamma at infinite dilution = A/T + B; reference l, s, gr: pure liquid, stable solid, graphite
-    "activity": Table(
-        ("host", "phase", "solute"),
-        ("A_K", "B"),
-        spread="spread_ln",
-        ranged=True,
-        law="inverse",
-        text=("reference",),
-    ),
-    # log10 of mass ppm per sqrt(atm) of the diatomic gas (H2, N2, O2, S2, P2) = A/T + B
-    "sieverts": Table(("host", "phase", "solute"), ("log10_A_K", "log10_B"), spread="spread_ln", ranged=True),
-    "interaction": Table(("host", "phase", "solute", "by"), ("epsilon", "T_K"), spread="spread"),
-    "diffusion": Table(
-        ("host", "phase", "solute"),
-        ("D0_m2_per_s", "Q_kJ_per_mol"),
-        spread="spread_factor",
-        ranged=True,
-        law="arrhenius",
-    ),
-    # measured content of the metal at saturation with a named phase
-    "solubility": Table(("host", "phase", "solute", "with"), ("T_K", "limit_ppm_mass"), spread="spread_ln"),
-    # containers: one row a compound; mass fractions sum to 1 within the traces
-    "containers": Table(("material", "formula"), ("mass_fraction",), text=("title", "aliases")),
-    "traces": Table(("material", "formula"), ("content_ppm_mass",), spread="spread_factor"),
-    "wall_values": Table(
-        ("material", "property"), ("value_SI",), spread="spread_factor"
-    ),  # leach_depth (m), open_porosity (1), service_oxidising, service_inert, service_vacuum (K)
-    # gate: metal-side exchange times `factor` below T_gate where the melt does not wet the wall
-    "wetting": Table(("host", "formula"), ("T_gate_K", "factor"), spread="spread_ln", text=("wets",)),
-    # rate of wall loss into the melt where no ceiling lies in the dilute range
-    "attack": Table(("host", "formula"), ("rate_m_per_s", "T_K"), spread="spread_ln"),
-    "atmospheres": Table(
-        ("atmosphere", "species"), ("fraction_ppm_mol",), spread="spread_factor", text=("title", "aliases")
-    ),
-    # adsorbed or bound on the surface of a charge, by preparation
-    "surfaces": Table(("host", "surface", "species"), ("amount_mg_per_m2",), spread="spread_factor"),
-    # law: limiting, logarithmic, parabolic...; p1..p3 in SI in the order of the law
-    "films": Table(
-        ("host", "film", "environment"),
-        ("p1", "p2", "p3", "Q_kJ_per_mol"),
-        spread="spread_factor",
-        ranged=True,
-        text=("law", "formula"),
-        optional=("p2", "p3", "Q_kJ_per_mol"),
-    ),
-    # permeability: mol m m-2 s-1 Pa-1 of a film of given thickness, or permeance mol m-2 s-1 Pa-1 of a wall
-    "packages": Table(
-        ("barrier", "gas"),
-        ("permeability_mol_per_m_s_Pa", "permeance_mol_per_m2_s_Pa", "T_K"),
-        spread="spread_factor",
-        text=("title", "aliases"),
-        optional=("permeability_mol_per_m_s_Pa", "permeance_mol_per_m2_s_Pa"),
-    ),
-    "desiccants": Table(("desiccant",), ("capacity_kg_per_kg", "floor_Pa"), spread="spread_factor"),
-    "sticking": Table(
-        ("host", "gas", "state"), ("probability",), spread="spread_ln", ranged=True, law="constant"
-    ),
-    "gas_transport": Table(("gas", "in"), ("D_m2_per_s", "T_ref_K", "exponent"), spread="spread_ln"),
-    # exchange at walls and free surfaces by stirring: k = value (D / D_ref)^exponent
-    "transfer": Table(("place", "stirring"), ("k_m_per_s", "D_ref_m2_per_s", "exponent"), spread="spread_ln"),
-    "priors": Table(("kind",), ("low_ppm", "high_ppm")),
-    "hazards": Table(
-        ("rule",),
-        ("T_min_K",),
-        optional=("T_min_K",),
-        text=("hosts", "elements", "gases", "materials", "processes", "caution", "consult"),
-    ),
-}
-
-
-@dataclass(frozen=True, slots=True)
-class Record:
-    """One row: what is known of one quantity by one source.
-
-    Parameters
-    ----------
-    table : str
-    quantity : str
-        What is measured, not who measured it: ``diffusion:Cu/liquid/O``.
-    fields : mapping of str to float
-        Number columns, as printed in the table.
-    words : mapping of str to str
-        Text columns.
-    spread : float
-        One sigma, in the sense of the table's spread column (0 where it has none).
-    T_min, T_max : float
-        Range of validity, K (0 and infinity where the table has none).
-    source, where, origin : str
-    quality : str
-        Class made from origin and spread: A measured and narrow, B measured, C from memory,
-        D estimate or derived without a measurement.
-    rank : int
-        1 is preferred.
-    line : int
-        Line of the file.
-    """
-
-    table: str
-    quantity: str
-    fields: Mapping[str, float]
-    words: Mapping[str, str]
-    spread: float
-    T_min: float
-    T_max: float
-    source: str
-    where: str
-    origin: str
-    quality: str
-    rank: int
-    line: int
-    yours: bool = False
+#: Half width of a 90 % band in standard deviations, the 95 % point of the standard normal law.
+_Z95 = 1.6448536269514722
 
 
 @dataclass(frozen=True, slots=True)
@@ -218,13 +79,25 @@ class Gap:
 
 @dataclass(frozen=True, slots=True)
 class Library:
-    """All tables with a user's own laid over them. Immutable; passed as an argument."""
+    """All tables with a user's own laid over them. Immutable; passed as an argument.
+
+    Parameters
+    ----------
+    tables : mapping of str to tuple of Record
+        Best first among the rivals of one quantity.
+    sources : mapping
+        By key: citation, address, origin.
+    data_hash : str
+        blake2b of every table in use, the user's own included.
+    prefer : tuple of str
+        Sources that go before all ranks.
+    """
 
     tables: Mapping[str, tuple[Record, ...]]
     sources: Mapping[str, Mapping[str, str]]
     data_hash: str
     prefer: tuple[str, ...] = ()
-    _index: Mapping[str, tuple[Record, ...]] | None = None
+    _index: Mapping[str, tuple[Record, ...]] = field(default_factory=dict, repr=False, compare=False)
 
     def find(self, table: str, **key: str) -> Found | Gap:
         """Return the best record of a quantity, or the gap.
@@ -233,15 +106,243 @@ class Library:
         ----------
         table : str
         **key : str
-            The key columns of the table.
+            All key columns of the table.
+
+        Returns
+        -------
+        Found or Gap
+            A curve given point by point (solubility) comes as a record and its rivals.
+
+        Raises
+        ------
+        TypeError
+            For a table or a key column that does not exist: a fault of the caller.
         """
-        raise NotImplementedError
+        spec = _spec(table)
+        if set(key) != set(spec.key):
+            raise TypeError(f"{table} is looked up by {', '.join(spec.key)}; given: {', '.join(key)}")
+        quantity = quantity_name(table, [key[column] for column in spec.key])
+        records = self._index.get(quantity, ())
+        if records:
+            return Found(records[0], records[1:], "yours" if records[0].yours else "measured")
+        known = tuple(name for name in dict.fromkeys(r.quantity for r in self.tables.get(table, ())))
+        return Gap(quantity, f"no record in the table {table}", _nearest(quantity, known))
 
     def rows(self, table: str, **key: str) -> tuple[Record, ...]:
-        """Return every best record whose key columns have the given values (some may be left out)."""
-        raise NotImplementedError
+        """Return the best record of each quantity whose key columns have the given values.
+
+        Parameters
+        ----------
+        table : str
+        **key : str
+            Any of the key columns; the others are free. In tables with a column ``T_K`` every
+            temperature has its own best record.
+        """
+        spec = _spec(table)
+        if not set(key) <= set(spec.key):
+            raise TypeError(f"{table} is looked up by {', '.join(spec.key)}; given: {', '.join(key)}")
+        best: dict[tuple[str, float | None], Record] = {}
+        for record in self.tables.get(table, ()):
+            if all(record.words[column] == value for column, value in key.items()):
+                best.setdefault((record.quantity, record.fields.get("T_K")), record)
+        return tuple(best.values())
+
+    def rivals(self, quantity: str) -> tuple[Record, ...]:
+        """Return every record of a quantity, the one in use first."""
+        return self._index.get(quantity, ())
+
+    def names(self, table: str, column: str) -> tuple[str, ...]:
+        """Return the different words in a column of a table, sorted."""
+        _spec(table)
+        return tuple(sorted({r.words.get(column, "") for r in self.tables.get(table, ())} - {""}))
+
+    def material(self, name: str) -> Material | Gap:
+        """Return a container, mould, tray or wrap by its key, title or alias (any case).
+
+        Contents, depth and porosity are inputs keyed by the quantity of their record
+        (``traces:magnesia/SiO2``), so that one wall used twice is drawn once.
+        """
+        found = _named(self, "containers", "material", name)
+        if isinstance(found, Gap):
+            return found
+        phases = self.rows("containers", material=found)
+        values = {r.words["property"]: r for r in self.rows("wall_values", material=found)}
+        service = {
+            name.removeprefix("service_"): r.fields["value_SI"]
+            for name, r in values.items()
+            if name.startswith("service_")
+        }
+        return Material(
+            name=next((r.words["title"] for r in phases if r.words["title"]), found),
+            phases={r.words["formula"]: r.fields["mass_fraction"] for r in phases},
+            traces={
+                r.words["formula"]: _given(r, r.fields["content_ppm_mass"] * 1e-6)
+                for r in self.rows("traces", material=found)
+            },
+            leach_depth=_optional(values, "leach_depth"),
+            open_porosity=_optional(values, "open_porosity"),
+            service=service,
+            origin=_origin("containers", found, phases),
+        )
+
+    def atmosphere(self, name: str) -> Atmosphere | Gap:
+        """Return a gas by its key, title or alias (any case), at 101 325 Pa in a room.
+
+        Only the mole fractions come from the table (keys ``atmospheres:<name>/<species>``): replace
+        `pressure` (marked as assumed) and `supply` by what the furnace does.
+        """
+        found = _named(self, "atmospheres", "atmosphere", name)
+        if isinstance(found, Gap):
+            return found
+        species = self.rows("atmospheres", atmosphere=found)
+        return Atmosphere(
+            name=next((r.words["title"] for r in species if r.words["title"]), found),
+            fractions={r.words["species"]: _given(r, r.fields["fraction_ppm_mol"] * 1e-6) for r in species},
+            pressure=exact(f"atmospheres:{found}/pressure", ATM, assumed=True),
+            supply=Still(),
+            origin=_origin("atmospheres", found, species),
+        )
 
 
-def load(overlay: Path | None = None, prefer: tuple[str, ...] = ()) -> Library:
-    """Read the tables of the package and a user's folder over them."""
-    raise NotImplementedError
+def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Library:
+    """Read the tables of the package and a user's folder over them.
+
+    Parameters
+    ----------
+    overlay : path, optional
+        Folder with tables of the same names and columns, and ``sources.csv``. Its rows replace all
+        records of the quantities they name (marked ``yours``, same random stream); a row whose
+        ``rank`` is 0 removes the quantity and needs no other columns than its key.
+    prefer : tuple of str, optional
+        Source keys that go before all ranks, or ``quantity=source`` for one quantity.
+
+    Returns
+    -------
+    Library
+        A table that has no file is empty.
+
+    Raises
+    ------
+    DataError
+        With every fault of the user's tables, by file and line.
+    """
+    tables, sources, faults = read_folder(DATA)
+    if faults:
+        raise DataError(str(DATA), faults)
+    digest = blake2b("".join(f"{n}{h}" for n, h in file_hashes(DATA).items()).encode(), digest_size=16)
+    if overlay is not None:
+        folder = Path(overlay)
+        faults = check(folder, sources)
+        if faults:
+            raise DataError(str(folder), faults)
+        own, own_sources, _ = read_folder(folder, yours=True)
+        tables = {name: _laid_over(tables.get(name, ()), own.get(name, ())) for name in TABLES}
+        sources = {**sources, **own_sources}
+        digest.update("".join(f"{n}{h}" for n, h in file_hashes(folder).items()).encode())
+    return _library(tables, sources, digest.hexdigest(), prefer)
+
+
+def _laid_over(base: Iterable[Record], own: Iterable[Record]) -> tuple[Record, ...]:
+    own = tuple(own)
+    replaced = {record.quantity for record in own}
+    kept = [record for record in base if record.quantity not in replaced]
+    return (*kept, *(record for record in own if record.rank > 0))
+
+
+def _library(
+    tables: Mapping[str, Iterable[Record]],
+    sources: Mapping[str, Mapping[str, str]],
+    data_hash: str,
+    prefer: tuple[str, ...],
+) -> Library:
+    chosen = _preferences(tables, sources, prefer)
+    ordered: dict[str, tuple[Record, ...]] = {}
+    index: dict[str, list[Record]] = {}
+    for name in TABLES:
+        ordered[name] = tuple(
+            sorted(
+                tables.get(name, ()),
+                key=lambda r: (not {r.source, f"{r.quantity}={r.source}"} & chosen, r.rank),
+            )
+        )
+        for record in ordered[name]:
+            index.setdefault(record.quantity, []).append(record)
+    return Library(ordered, sources, data_hash, prefer, {name: tuple(rows) for name, rows in index.items()})
+
+
+def _preferences(
+    tables: Mapping[str, Iterable[Record]], sources: Mapping[str, Mapping[str, str]], prefer: tuple[str, ...]
+) -> set[str]:
+    quantities = {record.quantity for rows in tables.values() for record in rows}
+    faults = []
+    for entry in prefer:
+        quantity, _, source = entry.rpartition("=")
+        if source not in sources:
+            near = ", ".join(get_close_matches(source, sources, 3)) or "none"
+            faults.append(Fault(0, entry, f"no source has the key {source!r}; nearest: {near}"))
+        if quantity and quantity not in quantities:
+            near = ", ".join(_nearest(quantity, tuple(sorted(quantities)))) or "none"
+            faults.append(Fault(0, entry, f"no table holds {quantity!r}; nearest: {near}"))
+    if faults:
+        raise DataError("prefer", faults)
+    return set(prefer)
+
+
+def _spec(table: str) -> Table:
+    if table not in TABLES:
+        near = ", ".join(get_close_matches(table, TABLES, 3)) or ", ".join(TABLES)
+        raise TypeError(f"there is no table {table!r}; nearest: {near}")
+    return TABLES[table]
+
+
+@lru_cache(maxsize=4096)
+def _nearest(name: str, known: tuple[str, ...]) -> tuple[str, ...]:
+    """Return up to three known names close to one, those with the same first words before others."""
+    head = name.split("/", 1)[0]
+    same = [other for other in known if other.split("/", 1)[0] == head]
+    return tuple(get_close_matches(name, same or known, 3, 0.5))
+
+
+def _named(library: Library, table: str, column: str, name: str) -> str | Gap:
+    wanted = name.strip().casefold()
+    words: dict[str, str] = {}
+    for record in library.tables.get(table, ()):
+        key = record.words[column]
+        for word in (key, record.words["title"], *record.words["aliases"].split(";")):
+            words.setdefault(word.strip().casefold(), key)
+    if wanted and wanted in words:
+        return words[wanted]
+    near = get_close_matches(wanted, [word for word in words if word], 3, 0.5)
+    return Gap(f"{table}:{name}", f"no {column} of this name in the table {table}", tuple(near))
+
+
+def _origin(table: str, name: str, rows: Iterable[Record]) -> str:
+    own = [r for r in rows if r.yours]
+    return f"your {table}.csv, line {own[0].line}" if own else f"{table}:{name}"
+
+
+def _given(record: Record, value: float) -> Given:
+    if record.spread <= 1.0 or value <= 0.0:
+        return exact(record.quantity, value)
+    width = record.spread**_Z95
+    return Given(record.quantity, "lognormal", value / width, value * width)
+
+
+def _optional(values: Mapping[str, Record], name: str) -> Given | None:
+    return _given(values[name], values[name].fields["value_SI"]) if name in values else None
+
+
+def phase_at(library: Library, host: str, T: float) -> str:
+    """Return the phase of a host at a temperature (K): a lattice name, or ``liquid``.
+
+    Raises
+    ------
+    OutOfRangeError
+        Where no row of the table of hosts holds the temperature.
+    """
+    rows = [r for r in library.tables.get("hosts", ()) if r.words["host"] == host]
+    for record in sorted(rows, key=lambda r: r.T_min):
+        if record.T_min <= T < record.T_max:
+            return record.words["phase"]
+    known = ", ".join(f"{r.words['phase']} {r.T_min:g} to {r.T_max:g} K" for r in rows)
+    raise OutOfRangeError(f"no phase of {host} is tabulated at {T:g} K; known: {known or 'none'}")
