@@ -28,7 +28,8 @@ BELOW_ASSESS = (
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
     "constants": set(),
-    "quantities": NUMBERS | {"scenario"},
+    "units": NUMBERS,
+    "quantities": NUMBERS | {"scenario", "units"},
     "composition": NUMBERS,
     "scenario": {"errors"},
     "tables": NUMBERS,
@@ -79,7 +80,21 @@ ALLOWED: dict[str, set[str]] = {
     "survey": BELOW_ASSESS | {"assess"},
     "affinity": BELOW_ASSESS | {"assess"},
     "new": BELOW_ASSESS | {"assess"},
-    "scenario_file": {"scenario", "database", "quantities", "errors", "constants"},
+    "scenario_lines": {"errors"},
+    "scenario_schema": NUMBERS | {"scenario", "quantities", "units"},
+    "scenario_names": NUMBERS | {"scenario", "database", "composition", "scenario_lines"},
+    "scenario_contacts": NUMBERS
+    | {"scenario", "database", "quantities", "scenario_lines", "scenario_schema", "scenario_names"},
+    "scenario_file": NUMBERS
+    | {
+        "scenario",
+        "database",
+        "quantities",
+        "scenario_lines",
+        "scenario_schema",
+        "scenario_names",
+        "scenario_contacts",
+    },
     "report.*": {"result", "report.*"},
     "report": {"result", "report.*"},
 }
