@@ -26,7 +26,7 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
         "viscosity_spread_ln": (0.01, 0.7),
     },
     "transitions": {"T_K": (10.0, 7000.0), "dH_J_per_mol": (0.0, 1e6)},
-    "gibbs": {"S298_J_per_mol_K": (1.0, 1500.0), "fit_error_J_per_mol": (0.0, 2000.0)},
+    "gibbs": {"S298_J_per_mol_K": (-600.0, 1500.0), "fit_error_J_per_mol": (0.0, 2000.0)},
     "diffusion": {"D0_m2_per_s": (1e-16, 1e4), "Q_kJ_per_mol": (1.0, 800.0)},
     "interaction": {"T_K": (200.0, 4000.0)},
     "solubility": {"T_K": (200.0, 4000.0), "limit_ppm_mass": (1e-5, 1e6)},
@@ -39,7 +39,7 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
 }
 #: Columns of either sign: 0, or low <= |value| <= high.
 SIZE: Mapping[str, Mapping[str, Bounds]] = {
-    "gibbs": {"H298_J_per_mol": (50.0, 2e7)},
+    "gibbs": {"H298_J_per_mol": (5.0, 2e7)},
     "activity": {"A_K": (10.0, 1e5), "B": (1e-4, 50.0)},
     "sieverts": {"log10_A_K": (10.0, 4e4), "log10_B": (1e-4, 12.0)},
     "interaction": {"epsilon": (0.01, 1000.0)},

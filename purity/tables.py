@@ -100,6 +100,11 @@ TABLES: Mapping[str, Table] = {
         ranged=True,
         text=("class",),
     ),
+    # interface model of the heat of solution: phi in V, n_ws^(1/3) in (d.u.)^(1/3), V^(2/3) in cm2;
+    # kind: transition, non-transition
+    "miedema": Table(
+        ("element",), ("phi_V", "n_ws_third", "V_two_thirds_cm2", "a", "R_over_P"), text=("kind",)
+    ),
     # ln gamma at infinite dilution = A/T + B; reference l, s, gr: pure liquid, stable solid, graphite
     "activity": Table(
         ("host", "phase", "solute"),
