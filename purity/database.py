@@ -308,7 +308,7 @@ def _named(library: Library, table: str, column: str, name: str) -> str | Gap:
     words: dict[str, str] = {}
     for record in library.tables.get(table, ()):
         key = record.words[column]
-        for word in (key, record.words["title"], *record.words["aliases"].split(";")):
+        for word in (key, record.words["title"], *record.words["aliases"].split("|")):
             words.setdefault(word.strip().casefold(), key)
     if wanted and wanted in words:
         return words[wanted]

@@ -1,7 +1,8 @@
 """Reading tables from files, and the rules that every row keeps.
 
-A folder of tables holds ``<table>.csv`` and ``sources*.csv`` (UTF-8, comma separated, decimal point,
-header in line 1). Nothing is read from outside the folder, whatever its names and links say.
+A folder of tables holds ``<table>.csv`` and ``sources*.csv``: UTF-8, comma separated, decimal point, a
+header line, before it any lines of remarks that begin with ``#``. Nothing is read from outside the
+folder, whatever its names and links say.
 """
 
 from __future__ import annotations
@@ -12,7 +13,6 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator, Mapping
 from difflib import get_close_matches
 from hashlib import blake2b
-from io import StringIO
 from math import inf, isfinite, log
 from pathlib import Path
 
@@ -90,27 +90,42 @@ def _csv_files(folder: Path, faults: list[Fault]) -> list[Path]:
 def _lines(path: Path, wanted: tuple[str, ...], faults: list[Fault]) -> Iterator[Line]:
     """Yield line number and row of a CSV file whose header holds the wanted columns."""
     try:
-        reader = csv.reader(StringIO(path.read_bytes().decode("utf-8-sig"), newline=""), strict=True)
+        text = path.read_bytes().decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        faults.append(Fault(0, path.name, f"is not UTF-8 text (byte {error.start}): save it as UTF-8"))
+        return
+    lines = text.splitlines(keepends=True)
+    remarks = next((i for i, line in enumerate(lines) if not line.startswith("#")), len(lines))
+    reader = csv.reader(lines[remarks:], strict=True)
+    try:
         header = [name.strip() for name in next(reader, [])]
-        missing = [name for name in wanted if name not in (*header, *OPTIONAL)]
-        for name in dict.fromkeys([*missing, *(n for n in header if n not in wanted or header.count(n) > 1)]):
-            what = "is missing" if name in missing else f"is unknown or doubled; known: {', '.join(wanted)}"
-            faults.append(Fault(1, path.name, f"column {name!r} {what}"))
-        if missing:
+        if _header_faults(path.name, header, wanted, remarks + 1, faults):
             return
         for cells in reader:
             if not any(cell.strip() for cell in cells):
                 continue
+            line = remarks + reader.line_num
             if len(cells) != len(header):
-                text = f"has {len(cells)} cells, the header {len(header)}: put quotes around text with commas"
-                faults.append(Fault(reader.line_num, path.name, text))
+                what = f"has {len(cells)} cells, the header {len(header)}: put quotes around text with commas"
+                faults.append(Fault(line, path.name, what))
                 continue
             row = dict(zip(header, (cell.strip() for cell in cells), strict=True))
-            yield reader.line_num, {**dict.fromkeys(OPTIONAL, ""), **row}
-    except UnicodeDecodeError as error:
-        faults.append(Fault(0, path.name, f"is not UTF-8 text (byte {error.start}): save it as UTF-8"))
+            yield line, {**dict.fromkeys(OPTIONAL, ""), **row}
     except csv.Error as error:
-        faults.append(Fault(reader.line_num, path.name, f"is not a table of comma separated values: {error}"))
+        what = f"is not a table of comma separated values: {error}"
+        faults.append(Fault(remarks + reader.line_num, path.name, what))
+
+
+def _header_faults(
+    name: str, header: list[str], wanted: tuple[str, ...], line: int, faults: list[Fault]
+) -> bool:
+    """Add what is wrong with a header; True where columns are missing."""
+    missing = [column for column in wanted if column not in (*header, *OPTIONAL)]
+    more = dict.fromkeys(c for c in header if c not in wanted or header.count(c) > 1)
+    faults.extend(Fault(line, name, f"column {column!r} is missing") for column in missing)
+    known = ", ".join(wanted)
+    faults.extend(Fault(line, name, f"column {c!r} is unknown or doubled; known: {known}") for c in more)
+    return bool(missing)
 
 
 def _read_sources(path: Path, sources: Sources, faults: list[Fault]) -> None:
