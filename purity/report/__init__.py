@@ -1,0 +1,1 @@
+"""Reports: take a Result, return text or bytes, compute nothing."""
