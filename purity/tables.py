@@ -150,10 +150,10 @@ TABLES: Mapping[str, Table] = {
     ),
     # adsorbed or bound on the surface of a charge, by preparation
     "surfaces": Table(("host", "surface", "species"), ("amount_mg_per_m2",), spread="spread_factor"),
-    # law: limiting, logarithmic, parabolic...; p1..p3 in SI in the order of the law
+    # law: limiting, logarithmic, parabolic...; p1..p3 in SI in the order of the law; density of the film
     "films": Table(
         ("host", "film", "environment"),
-        ("p1", "p2", "p3", "Q_kJ_per_mol"),
+        ("p1", "p2", "p3", "Q_kJ_per_mol", "density_kg_per_m3"),
         spread="spread_factor",
         ranged=True,
         text=("law", "formula"),
