@@ -174,6 +174,8 @@ TABLES: Mapping[str, Table] = {
     "gas_transport": Table(("gas", "in"), ("D_m2_per_s", "T_ref_K", "exponent"), spread="spread_ln"),
     # exchange at walls and free surfaces by stirring: k = value (D / D_ref)^exponent
     "transfer": Table(("place", "stirring"), ("k_m_per_s", "D_ref_m2_per_s", "exponent"), spread="spread_ln"),
+    # what a furnace's hot zone is made of: what it gives off (row set of atmospheres) and takes from the gas
+    "hot_zones": Table(("zone",), ("getter_share",), text=("outgassing",)),
     "priors": Table(("kind",), ("low_ppm", "high_ppm")),
     "hazards": Table(
         ("rule",),

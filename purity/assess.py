@@ -1,0 +1,357 @@
+"""From a scenario to a result: walk the steps, rank the choices of each, carry the lot on.
+
+Draw j of a step starts from draw j of the step before, so choices and routes are compared on the same
+draws. Physics is :mod:`purity.passing`; what is said of it is :mod:`purity.lines`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from concurrent.futures import Executor
+from dataclasses import dataclass
+from functools import partial
+from itertools import product
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity import __version__
+from purity.cautions import cautions, for_choice
+from purity.constants import GAS_FORMERS
+from purity.database import Found, Gap, Library
+from purity.draws import Draws, sample
+from purity.driving_force.substances import atoms
+from purity.errors import ScenarioError
+from purity.kinetics.advance import State
+from purity.lines import Column, block, columns, counts, group_columns, group_line, line, to_ppm
+from purity.passing import Passed, pass_step, total
+from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StepResult
+from purity.risk import Standing, load, standings, state as standing_state
+from purity.scenario import Choice, Given, Lot, Material, Scenario, scenario_hash
+from purity.uncertainty import assumed_share, band, drivers
+
+Array = NDArray[np.float64]
+
+#: Most runs of a choice that one assessment may make for its routes.
+MOST_RUNS = 400
+
+
+def assess(
+    scenario: Scenario,
+    library: Library,
+    draws: Draws,
+    *,
+    executor: Executor | None = None,
+    history: bool = False,
+    route: Sequence[str] | None = None,
+) -> Result:
+    """Rank the choices of every step and the routes through them.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    library : Library
+    draws : Draws
+    executor : concurrent.futures.Executor, optional
+        Runs the choices of a step side by side; the result does not depend on it.
+    history : bool
+        Keep contents over time.
+    route : sequence of str, optional
+        Choices by which later steps are entered; default: the best of each step.
+
+    Returns
+    -------
+    Result
+    """
+    impurities = followed(scenario)
+    molar_mass = molar_masses(library, (scenario.lot.host, *impurities))
+    run = partial(
+        pass_step, lot=scenario.lot, impurities=impurities, molar_mass=molar_mass, library=library, draws=draws,
+        history=history,
+    )
+    start = initial(scenario.lot, impurities, molar_mass, library, draws)
+    walked: dict[tuple[str, ...], Passed] = {}
+    steps: list[StepResult] = []
+    taken: tuple[str, ...] = ()
+    for number, step in enumerate(scenario.steps):
+        before = start if not taken else walked[taken].after
+        passed = _run(run, before, step.choices, executor)
+        for one in passed:
+            walked[(*taken, one.choice.name)] = one
+        steps.append(_step_result(step.name, step.process, taken, passed, scenario, library, draws))
+        taken = (*taken, _next(steps[-1], route, number, scenario))
+    routes = _routes(scenario, run, start, walked, draws)
+    gaps = tuple(
+        dict.fromkeys(gap_text(g) for one in walked.values() for found in one.gaps.values() for g in found)
+    )
+    used = {q for one in walked.values() for found in one.records.values() for q in (f.record.source for f in found)}
+    return Result(
+        Stamp(__version__, library.data_hash, scenario_hash(scenario), draws.seed, draws.n),
+        _facts(scenario, walked.values(), draws),
+        tuple(steps),
+        routes,
+        cautions(scenario, library),
+        gaps,
+        tuple(sorted(used)),
+    )
+
+
+def followed(scenario: Scenario) -> tuple[str, ...]:
+    """Return the elements of a run, sorted: certified, limited, gas formers, and what the walls are made of."""
+    lot = scenario.lot
+    elements = {*counts(lot), *GAS_FORMERS}
+    for step in scenario.steps:
+        for choice in step.choices:
+            for contact in choice.contacts:
+                if isinstance(contact.body, Material):
+                    for formula in (*contact.body.phases, *contact.body.traces):
+                        elements |= set(atoms(formula))
+    return tuple(sorted(elements - {lot.host}))
+
+
+def molar_masses(library: Library, elements: Sequence[str]) -> dict[str, float]:
+    """Return kg/mol of each element.
+
+    Raises
+    ------
+    LookupError
+        For an element that the table does not hold.
+    """
+    masses = {}
+    for element in elements:
+        found = library.find("elements", element=element)
+        if isinstance(found, Gap):
+            raise LookupError(f"no atomic mass of {element}")
+        masses[element] = found.record.fields["molar_mass_g_per_mol"] / 1000.0
+    return masses
+
+
+def initial(
+    lot: Lot, impurities: Sequence[str], molar_mass: Mapping[str, float], library: Library, draws: Draws
+) -> State:
+    """Return the lot as certified; an element without a certificate has a stated prior, never zero."""
+    rows = []
+    for element in impurities:
+        certified = lot.certificate.get(element)
+        given = prior(library, element) if certified is None else certified.given
+        rows.append(sample(draws, given) * molar_mass[lot.host] / molar_mass[element])
+    x = np.stack([np.broadcast_to(row, (draws.n,)) for row in rows])
+    return State(x, np.zeros_like(x))
+
+
+def prior(library: Library, element: str) -> Given:
+    """Return what an uncertified content is taken to be, mass fraction."""
+    found = library.find("priors", kind=f"uncertified {element}")
+    if isinstance(found, Gap):
+        found = library.find("priors", kind="uncertified metal")
+    assert isinstance(found, Found)
+    low, high = found.record.fields["low_ppm"] * 1e-6, found.record.fields["high_ppm"] * 1e-6
+    return Given(f"lot/uncertified/{element}", "lognormal", low, high, True)
+
+
+def gap_text(gap: Gap) -> str:
+    """Return a gap as a sentence."""
+    near = f"; nearest: {', '.join(gap.nearest)}" if gap.nearest else ""
+    return f"{gap.quantity}: {gap.reason}{near}"
+
+
+def _run(run: partial[Passed], before: State, choices: Sequence[Choice], executor: Executor | None) -> list[Passed]:
+    if executor is None:
+        return [run(before, choice) for choice in choices]
+    return list(executor.map(run, [before] * len(choices), choices))
+
+
+def _next(done: StepResult, route: Sequence[str] | None, number: int, scenario: Scenario) -> str:
+    """Name of the choice by which the next step is entered."""
+    if route is not None and number < len(route):
+        names = [choice.name for choice in scenario.steps[number].choices]
+        if route[number] not in names:
+            raise ScenarioError(scenario.title, ()) from LookupError(route[number])
+        return route[number]
+    ranked = [choice for choice in done.choices if choice.rank is not None]
+    first = min(ranked, key=lambda choice: choice.rank or 0) if ranked else done.choices[0]
+    return first.name
+
+
+@dataclass(frozen=True, slots=True)
+class _Weighed:
+    """Columns of a choice that have a limit, as arrays for ranking."""
+
+    names: tuple[str, ...]
+    over: NDArray[np.bool_]
+    loads: Array
+
+
+def _weigh(passed: Passed, lot: Lot) -> _Weighed:
+    found = columns(passed, lot)
+    unknown = {element for element in found if passed.gaps.get(element)}
+    rows = [c for c in (*found.values(), *group_columns(found, lot)) if c.limit is not None and c.certified]
+    rows = [c for c in rows if c.element not in unknown]
+    n = passed.setting.draws.n
+    over = np.array([c.end > (c.limit or 0.0) for c in rows]).reshape(len(rows), n)
+    loads = np.array([load(float(np.median(c.start)), c.end, c.limit or 0.0) for c in rows]).reshape(len(rows), n)
+    return _Weighed(tuple(c.element for c in rows), over, loads)
+
+
+def _standing_state(passed: Passed, lot: Lot) -> tuple[str, tuple[int, int]]:
+    needed = counts(lot)
+    assessed = sum(not passed.gaps.get(element) for element in needed)
+    attacked = bool(passed.attacked.mean() > 0.05)
+    return standing_state(assessed, len(needed), attacked=attacked), (assessed, len(needed))
+
+
+def _step_result(
+    name: str,
+    process: str,
+    taken: tuple[str, ...],
+    passed: Sequence[Passed],
+    scenario: Scenario,
+    library: Library,
+    draws: Draws,
+) -> StepResult:
+    lot, blocks = scenario.lot, max(draws.blocks, 1)
+    states = [_standing_state(one, lot) for one in passed]
+    weighed = [_weigh(one, lot) for one in passed]
+    ranks = standings(
+        [s for s, _ in states], [w.over for w in weighed], [w.loads for w in weighed], blocks  # type: ignore[misc]
+    )
+    names = [one.choice.name for one in passed]
+    done = [
+        _choice_result(one, state, assessed, standing, w, names, scenario, library, draws)
+        for one, (state, assessed), standing, w in zip(passed, states, ranks, weighed, strict=True)
+    ]
+    order = sorted(done, key=lambda c: (c.rank is None, c.rank or 0, c.state == "attacked"))
+    return StepResult(name, process, taken, tuple(order))
+
+
+def _choice_result(
+    passed: Passed,
+    state: str,
+    assessed: tuple[int, int],
+    standing: Standing,
+    weighed: _Weighed,
+    names: Sequence[str],
+    scenario: Scenario,
+    library: Library,
+    draws: Draws,
+) -> ChoiceResult:
+    lot, blocks = scenario.lot, max(draws.blocks, 1)
+    found = columns(passed, lot)
+    lines = [line(passed, column, lot, blocks) for column in found.values() if _worth_a_line(passed, column)]
+    lines += [group_line(column, blocks) for column in group_columns(found, lot)]
+    deciding = None if standing.deciding is None else weighed.names[standing.deciding]
+    share, measure = _assumed(passed, found, deciding, draws)
+    loss = float(np.median(passed.host_loss)) * 100.0
+    return ChoiceResult(
+        name=passed.choice.name,
+        rank=standing.rank,
+        state=state,  # type: ignore[arg-type]
+        tied_with=tuple(names[j] for j in standing.tied_with),
+        chance_over=standing.chance_over,
+        chance_error=standing.chance_error,
+        deciding=deciding,
+        spent=standing.spent,
+        assessed=assessed,
+        complete=assessed[0] == assessed[1],
+        assumed_share=share,
+        lines=tuple(lines),
+        host_loss_percent=loss,
+        attack_um=None,
+        warnings=(*passed.notes, *_numerical(passed), *for_choice(passed.choice, lot, library)),
+        species=(),
+        measure=measure,
+    )
+
+
+def _worth_a_line(passed: Passed, column: Column) -> bool:
+    """Certified and limited elements always; others where they move, or could not be assessed."""
+    moved = bool(np.any(np.abs(column.end - column.start) > 1e-6))
+    return column.certified or column.limit is not None or moved or bool(passed.gaps.get(column.element))
+
+
+def _numerical(passed: Passed) -> tuple[str, ...]:
+    texts = []
+    if passed.error > 1e-2:
+        texts.append(f"time steps leave an error of up to {passed.error:.0%} in this choice")
+    if passed.flags.any():
+        texts.append(f"{passed.flags.mean():.1%} of the draws were not solved cleanly and are kept as they are")
+    return tuple(texts)
+
+
+def _assumed(
+    passed: Passed, found: Mapping[str, Column], deciding: str | None, draws: Draws
+) -> tuple[float | None, tuple[str, ...]]:
+    """Share of the deciding band that comes from assumed inputs, and those inputs, first the largest."""
+    from purity.draws import normal
+
+    if deciding not in found or not draws.blocks:
+        return None, ()
+    givens = {g.key: g for one in passed.exposed for g in one.inputs if g.law != "exact"}
+    inputs = {key: normal(draws, key)[0] for key in givens}
+    inputs |= {f.record.quantity: normal(draws, f.record.quantity)[0] for f in passed.records.get(deciding, ())}
+    drive = drivers(inputs, found[deciding].end)
+    assumed = {key for key, given in givens.items() if given.assumed}
+    return assumed_share(drive, assumed), tuple(key for key in drive.shares if key in assumed)[:3]
+
+
+def _facts(scenario: Scenario, walked: object, draws: Draws) -> ScenarioFacts:
+    lot = scenario.lot
+    assumed = {
+        given.key
+        for one in walked  # type: ignore[attr-defined]
+        for exposed in one.exposed
+        for given in exposed.inputs
+        if given.assumed
+    }
+    limits = {element: 1e6 * limit for element, limit in lot.limits.items()}
+    if lot.metals_limit is not None:
+        limits["metals"] = 1e6 * lot.metals_limit
+    return ScenarioFacts(
+        scenario.title, lot.host, lot.mass.median, scenario.risk, tuple(sorted(assumed)), limits, scenario.warnings
+    )
+
+
+def _routes(
+    scenario: Scenario,
+    run: partial[Passed],
+    start: State,
+    walked: dict[tuple[str, ...], Passed],
+    draws: Draws,
+) -> tuple[RouteResult, ...]:
+    """Every route, best first; each prefix is run once and shared by the routes that begin with it."""
+    runs = int(np.sum(np.cumprod([len(step.choices) for step in scenario.steps])))
+    if len(scenario.steps) < 2 or runs > MOST_RUNS:
+        return ()
+    lot = scenario.lot
+    paths = list(product(*([choice.name for choice in step.choices] for step in scenario.steps)))
+    by_name = [{choice.name: choice for choice in step.choices} for step in scenario.steps]
+    ends = []
+    for path in paths:
+        before = start
+        for depth in range(len(path)):
+            prefix = path[: depth + 1]
+            if prefix not in walked:
+                walked[prefix] = run(before, by_name[depth][path[depth]])
+            before = walked[prefix].after
+        ends.append([walked[path[: depth + 1]] for depth in range(len(path))])
+    states = [_route_state(legs, lot) for legs in ends]
+    weighed = [_weigh(legs[-1], lot) for legs in ends]
+    ranks = standings(
+        states, [w.over for w in weighed], [w.loads for w in weighed], max(draws.blocks, 1)  # type: ignore[arg-type]
+    )
+    results = [
+        RouteResult(
+            path, r.chance_over, r.chance_error, None if r.deciding is None else w.names[r.deciding], r.rank,
+            None if s == "ranked" else s,
+        )
+        for path, r, w, s in zip(paths, ranks, weighed, states, strict=True)
+    ]
+    return tuple(sorted(results, key=lambda r: (r.rank is None, r.rank or 0)))
+
+
+def _route_state(legs: Sequence[Passed], lot: Lot) -> str:
+    found = [_standing_state(leg, lot)[0] for leg in legs]
+    return next((state for state in found if state != "ranked"), "ranked")
+
+
+__all__ = ["assess", "band", "block", "followed", "initial", "molar_masses", "prior", "to_ppm", "total"]

@@ -1,0 +1,283 @@
+"""What every contact of one choice has in common, and the parts that contacts are built from."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
+from functools import reduce
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.constants import R
+from purity.database import TABLES, Found, Gap, Library, Record, ln_value
+from purity.draws import Draws, normal, sample
+from purity.driving_force.substances import Energy, atoms, ln_dissolution
+from purity.kinetics.exposure import Carrier, Curve, Exposure
+from purity.scenario import Choice, Given, Lot
+
+Array = NDArray[np.float64]
+
+#: Temperature at which leaks, pumps and head spaces are counted, K.
+T_ROOM = 295.0
+
+
+@dataclass(frozen=True, slots=True)
+class Setting:
+    """The metal, the choice and the draws that all contacts of a choice share.
+
+    Parameters
+    ----------
+    library : Library
+    draws : Draws
+    lot : Lot
+    choice : Choice
+    phase : str
+        Phase of the host during the step, a row of the host table.
+    impurities : tuple of str
+        I elements of the run, in fixed order.
+    molar_mass : mapping
+        kg/mol of the host and of each impurity.
+    T : (K,) array
+        Knots of temperature, K, rising.
+    duration : (N,) array
+        s.
+    amount : (N,) array
+        mol of host.
+    molar_density : (N,) array
+        mol/m3.
+    """
+
+    library: Library
+    draws: Draws
+    lot: Lot
+    choice: Choice
+    phase: str
+    impurities: tuple[str, ...]
+    molar_mass: Mapping[str, float]
+    T: Array
+    duration: Array
+    amount: Array
+    molar_density: Array
+
+    @property
+    def host(self) -> str:
+        """Element of the host."""
+        return self.lot.host
+
+    @property
+    def liquid(self) -> bool:
+        """True for a melt."""
+        return self.phase == "liquid"
+
+    def sample(self, given: Given) -> Array:
+        """Draw an input: (N,) or (1,)."""
+        return sample(self.draws, given)
+
+
+@dataclass(frozen=True, slots=True)
+class Exposed:
+    """A contact, ready for kinetics, with the records and inputs behind it.
+
+    Parameters
+    ----------
+    exposure : Exposure
+    gain : (I, N) array or None
+        Content brought at once at the start of the step, mol per mol of host.
+    carrier_records : mapping
+        Records behind each carrier, by its name.
+    element_records : mapping
+        Records behind the exchange or the gain of each element.
+    inputs : tuple of Given
+        Inputs that were drawn.
+    gaps : mapping
+        What has no record, by the element that it leaves unassessed ("" for none in particular).
+    notes : tuple of str
+        What was assumed, in words.
+    """
+
+    exposure: Exposure
+    gain: Array | None = None
+    carrier_records: Mapping[str, tuple[Found, ...]] = field(default_factory=dict)
+    element_records: Mapping[str, tuple[Found, ...]] = field(default_factory=dict)
+    inputs: tuple[Given, ...] = ()
+    gaps: Mapping[str, tuple[Gap, ...]] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+
+
+Expose = Callable[..., Exposed]
+
+
+def curve(setting: Setting, ln: Array) -> Curve:
+    """Return a curve on the knots of the step; `ln` is (..., K, N)."""
+    return Curve(setting.T, np.asarray(ln, dtype=float))
+
+
+def flat(setting: Setting, value: Array | float) -> Curve:
+    """Return a curve that does not depend on temperature; `value` is (N,) and positive."""
+    ln = np.log(np.atleast_1d(np.asarray(value, dtype=float)))
+    return Curve(setting.T[:1], ln[np.newaxis, :])
+
+
+def stoichiometry(setting: Setting, formula: str) -> Array | None:
+    """Return atoms of each impurity in a formula, (I,), or None where an atom is not followed.
+
+    Atoms of the host itself count in ln K at activity 1 and leave no entry here.
+    """
+    counts = atoms(formula)
+    if not set(counts) <= {*setting.impurities, setting.host}:
+        return None
+    return np.array([float(counts.get(element, 0.0)) for element in setting.impurities])
+
+
+def carrier(
+    setting: Setting,
+    formula: str,
+    state: str,
+    *,
+    name: str | None = None,
+    activity: Array,
+    conductance: Curve | None = None,
+    inventory: Array | None = None,
+    limit: str = "gas film",
+) -> tuple[Carrier, tuple[Found, ...]] | Gap:
+    """Make the carrier of a compound or gas that dissolves atom by atom.
+
+    Parameters
+    ----------
+    formula, state : str
+        Row of the Gibbs table.
+    activity : (N,) array
+        On the far side: 1 for a pure phase, p/P0 for a gas.
+    conductance, inventory, limit
+        As in :class:`Carrier`.
+
+    Returns
+    -------
+    (Carrier, records) or Gap
+    """
+    nu = stoichiometry(setting, formula)
+    if nu is None or not nu.any():
+        return Gap(f"gibbs:{formula}/{state}", f"{formula} holds an element that is not followed here")
+    energy = ln_dissolution(
+        setting.library, setting.host, setting.phase, formula, state, setting.T[:, np.newaxis], setting.draws
+    )
+    if isinstance(energy, Gap):
+        return energy
+    made = Carrier(name or formula, nu, curve(setting, energy.value), activity, conductance, inventory, limit)
+    return made, energy.found
+
+
+def carrier_of(setting: Setting, gas: str, mol: Array) -> Carrier:
+    """Return a carrier that is nothing but a supply: so many mol of a gas and no more."""
+    nu = stoichiometry(setting, gas)
+    assert nu is not None, gas
+    return Carrier(gas, nu, flat(setting, 1.0), np.ones(1), None, mol, "permeation")
+
+
+def diffusivity(setting: Setting, element: str) -> tuple[Array, Found] | Gap:
+    """Return ln D (m2/s) at the knots, (K, N): the pair's own record, else the class estimate of its phase."""
+    library = setting.library
+    found = library.find("diffusion", host=setting.host, phase=setting.phase, solute=element)
+    if isinstance(found, Gap):
+        general = library.find("diffusion", host="*", phase=setting.phase, solute="*")
+        if isinstance(general, Gap):
+            return found
+        found = Found(general.record, general.rivals, "estimate")
+    z = normal(setting.draws, f"diffusion:{setting.host}/{setting.phase}/{element}", 2)
+    return ln_value(found.record, setting.T[:, np.newaxis], z), found
+
+
+def spread_factor(setting: Setting, record: Record) -> Array:
+    """Return the multiplicative deviation of a record without a law of its own, (N,)."""
+    return np.asarray(np.exp(_ln_sigma(record) * normal(setting.draws, record.quantity)[0]))
+
+
+def _ln_sigma(record: Record) -> float:
+    return float(np.log(record.spread)) if TABLES[record.table].spread == "spread_factor" else record.spread
+
+
+def series(*conductances: Array | None) -> Array:
+    """Add resistances in series; None stands for no resistance.
+
+    Parameters
+    ----------
+    *conductances : arrays or None
+        mol m-2 s-1 per unit activity.
+
+    Returns
+    -------
+    array
+        Broadcast of the inputs.
+    """
+    parts = [1.0 / np.asarray(part, dtype=float) for part in conductances if part is not None]
+    return np.asarray(1.0 / reduce(np.add, parts))
+
+
+def exchange(setting: Setting, place: str, factor: Array | None = None) -> tuple[Curve, dict[str, tuple[Found, ...]]]:
+    """Return the metal-side exchange of every impurity at a wall or free surface.
+
+    A melt takes k = k_ref (D/D_ref)^m of its place and stirring, with one factor of stirring for the
+    whole bath (boundary-layer theory: m = 1/2 for surface renewal, 2/3 at a wall). In a solid the
+    resistance is the diffusion inside, so the exchange is left without limit.
+
+    Parameters
+    ----------
+    place : str
+        ``wall`` or ``free surface``.
+    factor : (K, N) array or None
+        Share of the exchange that the contact leaves open (wetting, contact share).
+
+    Returns
+    -------
+    (Curve (I, K, N) in m/s, records by element)
+    """
+    if not setting.liquid:
+        ln = np.zeros((len(setting.impurities), len(setting.T), 1))
+        if factor is not None:
+            ln = ln + np.log(factor)
+        return curve(setting, ln), {}
+    stirring = setting.choice.stirring or "quiescent"
+    found = setting.library.find("transfer", place=place, stirring=stirring)
+    if isinstance(found, Gap):
+        raise LookupError(f"the transfer table has no row for {place}, {stirring}")
+    record = found.record
+    z = normal(setting.draws, f"stirring:{stirring}")[0]
+    ln_ref = np.log(record.fields["k_m_per_s"]) + record.spread * z
+    rows, records = [], {}
+    for element in setting.impurities:
+        diffusion = diffusivity(setting, element)
+        if isinstance(diffusion, Gap):
+            rows.append(np.broadcast_to(ln_ref, (len(setting.T), len(ln_ref))))
+            records[element] = (found,)
+            continue
+        ln_d, own = diffusion
+        rows.append(ln_ref + record.fields["exponent"] * (ln_d - np.log(record.fields["D_ref_m2_per_s"])))
+        records[element] = (found, own)
+    ln = np.stack(np.broadcast_arrays(*rows))
+    if factor is not None:
+        ln = ln + np.log(factor)
+    return curve(setting, ln), records
+
+
+def vapour_speed(T: Array | float, molar_mass: float) -> Array:
+    """Return 1 / sqrt(2 pi M R T), the Hertz-Knudsen factor, mol m-2 s-1 Pa-1."""
+    return np.asarray(1.0 / np.sqrt(2.0 * np.pi * molar_mass * R * np.asarray(T, dtype=float)))
+
+
+__all__ = [
+    "T_ROOM",
+    "Energy",
+    "Exposed",
+    "Setting",
+    "carrier",
+    "carrier_of",
+    "curve",
+    "diffusivity",
+    "exchange",
+    "flat",
+    "series",
+    "spread_factor",
+    "stoichiometry",
+    "vapour_speed",
+]

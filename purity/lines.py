@@ -1,0 +1,231 @@
+"""From draws to lines: what a report says of one impurity and one choice."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.constants import GAS_FORMERS, R
+from purity.contacts.ceilings import ceiling
+from purity.database import Found, outside
+from purity.kinetics.advance import HELD_BACK_BY
+from purity.passing import Passed, total
+from purity.result import Band, Block, ContactLine, Line
+from purity.risk import margin, spent, word
+from purity.scenario import Lot
+from purity.uncertainty import band, chance
+
+Array = NDArray[np.float64]
+
+#: Mass fraction to mass ppm.
+PPM = 1e6
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One impurity of one choice as draws, mass ppm.
+
+    Parameters
+    ----------
+    element : str
+    start, end : (N,) arrays
+        Whole contents.
+    limit : float or None
+    certified : bool
+    """
+
+    element: str
+    start: Array
+    end: Array
+    limit: float | None
+    certified: bool
+
+
+def to_ppm(passed: Passed) -> Array:
+    """Return mass ppm per unit of content (mol per mol of host) of each impurity, (I, 1)."""
+    masses = passed.setting.molar_mass
+    host = masses[passed.setting.host]
+    return np.array([[masses[element] / host * PPM] for element in passed.impurities])
+
+
+def columns(passed: Passed, lot: Lot) -> dict[str, Column]:
+    """Return the draws of every impurity."""
+    scale = to_ppm(passed)
+    start, end = total(passed.before) * scale, total(passed.after) * scale
+    return {
+        element: Column(
+            element,
+            start[i],
+            end[i],
+            lot.limits[element] * PPM if element in lot.limits else None,
+            element in lot.certificate,
+        )
+        for i, element in enumerate(passed.impurities)
+    }
+
+
+def counts(lot: Lot) -> tuple[str, ...]:
+    """Return the elements that a choice must be assessed for: certified or limited ones."""
+    grouped = {element for members in lot.groups.values() for element in members}
+    return tuple(sorted({*lot.certificate, *lot.limits, *grouped}))
+
+
+def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
+    """Return the line of one impurity.
+
+    Parameters
+    ----------
+    passed : Passed
+    column : Column
+    lot : Lot
+    blocks : int
+        Replicates in the draws.
+
+    Returns
+    -------
+    Line
+        An element without a certificate has no start and no end, only its pickup.
+    """
+    element = column.element
+    i = passed.impurities.index(element)
+    gap = _gap(passed, element)
+    known = column.certified and gap is None
+    start, end = band(column.start), band(column.end)
+    scale = to_ppm(passed)[i, 0]
+    over = chance(column.end, column.limit, blocks) if known and column.limit is not None else None
+    limit = column.limit
+    ceilings = _ceilings(passed, i)
+    best = _deciding_ceiling(passed, i, ceilings)
+    certified = lot.certificate.get(element)
+    records = passed.records.get(element, ())
+    return Line(
+        impurity=element,
+        block=block(element),
+        start=start if column.certified else None,
+        end=end if known else None,
+        dissolved=band(passed.after.x[i] * scale) if known else None,
+        pickup=band(column.end - column.start) if gap is None else None,
+        limit=limit,
+        margin=margin(end.high, limit) if known and limit is not None else None,
+        worst=None,
+        detection=None if certified is None or certified.detection_limit is None else certified.detection_limit * PPM,
+        spent=spent(start.median, end.median, limit) if known and limit is not None else None,
+        word=word(start.median, end.median, limit) if known and limit is not None else None,
+        chance_over=None if over is None else over[0],
+        chance_error=None if over is None else over[1],
+        ceiling=None if best is None else band(np.exp(best) * scale),
+        driving_force=None if best is None else _driving_force(passed, i, best),
+        held_back_by=_held_back_by(passed, i),
+        shares={name: float(s) for name, s in zip(HELD_BACK_BY, passed.shares[:, i], strict=True) if abs(s) > 1e-3},
+        contacts=_contact_lines(passed, i, column, scale, ceilings),
+        forms=passed.formed.get(element, ()),
+        records=tuple(sorted(found.record.quantity for found in records)),
+        quality=max((found.record.quality for found in records), default=None),
+        extrapolated=any(_extrapolated(found, passed) for found in records),
+        gap=gap or (None if column.certified else "not certified: the end is not known"),
+        series=_series(passed, element, scale),
+        start_method=None if certified is None else certified.method,
+    )
+
+
+def block(element: str) -> Block:
+    """Return the block of the table in which an element stands."""
+    return "gas formers" if element in GAS_FORMERS else "metals"
+
+
+def _gap(passed: Passed, element: str) -> str | None:
+    found = passed.gaps.get(element, ())
+    return f"no data: {found[0].quantity} ({found[0].reason})" if found else None
+
+
+def _ceilings(passed: Passed, i: int) -> list[Array | None]:
+    x = total(passed.after)
+    return [ceiling(one, passed.setting, x, passed.hot, i) for one in passed.exposed]
+
+
+def _deciding_ceiling(passed: Passed, i: int, ceilings: Sequence[Array | None]) -> Array | None:
+    """Ceiling of the contact that moves the element most."""
+    moved = [abs(float(np.median(passed.ledger[c, i]))) for c in range(len(ceilings))]
+    held = [c for c, value in enumerate(ceilings) if value is not None]
+    return ceilings[max(held, key=lambda c: moved[c])] if held else None
+
+
+def _driving_force(passed: Passed, i: int, ln_ceiling: Array) -> float:
+    """Median of R T (ln ceiling - ln start), J per mole of impurity."""
+    ln_start = np.log(np.maximum(total(passed.before)[i], 1e-30))
+    return float(np.median(R * passed.hot * (ln_ceiling - ln_start)))
+
+
+def _held_back_by(passed: Passed, i: int) -> str | None:
+    shares = passed.shares[:, i]
+    return HELD_BACK_BY[int(np.argmax(shares))] if np.any(shares > 0) else None
+
+
+def _contact_lines(
+    passed: Passed, i: int, column: Column, scale: float, ceilings: Sequence[Array | None]
+) -> tuple[ContactLine, ...]:
+    """Ledger of the draw whose pickup is the median, so that the contacts sum to a pickup; bands over all."""
+    pickup = column.end - column.start
+    middle = int(np.argsort(pickup, kind="stable")[(len(pickup) - 1) // 2])
+    rows = []
+    for c, name in enumerate(passed.contacts):
+        gained = passed.ledger[c, i] * scale
+        if not np.any(gained != 0.0):
+            continue
+        own = band(gained)
+        ends = ceilings[c]
+        rows.append(
+            ContactLine(name, Band(own.low, float(gained[middle]), own.high), None if ends is None else band(np.exp(ends) * scale))
+        )
+    return tuple(rows)
+
+
+def _extrapolated(found: Found, passed: Passed) -> bool:
+    return bool(np.any(outside(found.record, np.median(passed.hot))))
+
+
+def _series(passed: Passed, element: str, scale: float) -> tuple[tuple[float, Band], ...] | None:
+    if element not in passed.series:
+        return None
+    times, contents = passed.series[element]
+    t = np.median(times, axis=-1) if np.ndim(times) == 2 else times
+    return tuple((float(when), band(row * scale)) for when, row in zip(t, contents, strict=True))
+
+
+def group_columns(found: Mapping[str, Column], lot: Lot) -> list[Column]:
+    """Return sums with a limit of their own: groups, and all metals together (C N O H S left out)."""
+    rows = []
+    sums = {name: members for name, members in lot.groups.items()}
+    limits = {name: lot.limits[name] for name in sums if name in lot.limits}
+    if lot.metals_limit is not None:
+        sums["metals"] = tuple(e for e in lot.certificate if block(e) == "metals")
+        limits["metals"] = lot.metals_limit
+    for name, members in sums.items():
+        present = [found[e] for e in members if e in found]
+        if name not in limits or not present:
+            continue
+        start = np.sum([c.start for c in present], axis=0)
+        end = np.sum([c.end for c in present], axis=0)
+        rows.append(Column(name, start, end, limits[name] * PPM, all(c.certified for c in present)))
+    return rows
+
+
+def group_line(column: Column, blocks: int) -> Line:
+    """Return the line of a sum with a limit of its own."""
+    start, end = band(column.start), band(column.end)
+    limit = column.limit
+    assert limit is not None
+    over = chance(column.end, limit, blocks) if column.certified else (None, None)
+    return Line(
+        impurity=column.element, block="metals", start=start if column.certified else None,
+        end=end if column.certified else None, dissolved=None, pickup=band(column.end - column.start), limit=limit,
+        margin=margin(end.high, limit) if column.certified else None, worst=None, detection=None,
+        spent=spent(start.median, end.median, limit) if column.certified else None,
+        word=word(start.median, end.median, limit) if column.certified else None,
+        chance_over=over[0], chance_error=over[1], ceiling=None, driving_force=None, held_back_by=None, shares={},
+        contacts=(), forms=(), records=(), quality=None, extrapolated=False,
+        gap=None if column.certified else "a member of this sum is not certified",
+    )

@@ -1,0 +1,490 @@
+"""One choice of one step: the lot goes in as it is, and comes out as kinetics leaves it.
+
+Elements that no carrier and no skin ties together are moved apart from each other, so that a record
+changes only the elements it has to do with, to the last bit. Compounds that could form are watched:
+where the metal ends beyond the saturation of one, the step is redone with that compound as a skin.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.contacts import expose
+from purity.contacts.gas import host_evaporation
+from purity.contacts.setting import Exposed, Setting, stoichiometry
+from purity.database import Found, Gap, Library, phase_at
+from purity.draws import Draws, normal, sample
+from purity.driving_force.substances import ln_dissolution
+from purity.kinetics.advance import HELD_BACK_BY, Host, Pickup, State, advance
+from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, ln_at
+from purity.kinetics.arrhenius import curve_integral
+from purity.kinetics.schedule import Schedule, segments
+from purity.scenario import Choice, Lot
+
+Array = NDArray[np.float64]
+
+#: Knots of temperature in a step, for curves.
+KNOTS = 6
+#: Nodes a segment of the bath and body integrators in the main job.
+NODES = 16
+#: ln of saturation beyond which a compound is taken to form.
+BEYOND = 1e-6
+#: ln of nominal saturation, at the highest contents of all draws, below which no draw is looked at.
+REACH = 15.0
+#: Most rounds in which compounds that turn out to form are added.
+ROUNDS = 5
+
+
+@dataclass(frozen=True, slots=True)
+class Passed:
+    """What one choice did to the lot.
+
+    Parameters
+    ----------
+    choice : Choice
+    impurities : tuple of str
+    contacts : tuple of str
+    before, after : State
+    ledger : (C, I, N) array
+        mol per mol of host gained through each contact.
+    settings : Setting
+    exposed : tuple of Exposed
+    records : mapping of element to records
+    gaps : mapping of element to gaps
+    shares : (L, I) array
+        Shares of HELD_BACK_BY, middle of the draws.
+    formed : mapping of element to names of compounds
+    attacked, flags : (N,) bool arrays
+    error : float
+    host_loss : (N,) array
+        Share of the host that evaporated.
+    hot : (N,) array
+        Highest temperature, K.
+    series : mapping of element to (times (K,), contents (K, N))
+    notes : tuple of str
+    """
+
+    choice: Choice
+    impurities: tuple[str, ...]
+    contacts: tuple[str, ...]
+    before: State
+    after: State
+    ledger: Array
+    setting: Setting
+    exposed: tuple[Exposed, ...]
+    records: Mapping[str, tuple[Found, ...]]
+    gaps: Mapping[str, tuple[Gap, ...]]
+    shares: Array
+    formed: Mapping[str, tuple[str, ...]]
+    attacked: NDArray[np.bool_]
+    flags: NDArray[np.bool_]
+    error: float
+    host_loss: Array
+    hot: Array
+    series: Mapping[str, tuple[Array, Array]] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+
+
+def total(state: State) -> Array:
+    """Return the whole content, dissolved, suspended and at the surface, (I, N) mol per mol of host."""
+    x = state.x + state.suspended
+    return x if state.surface is None else x + state.surface
+
+
+def make_setting(
+    lot: Lot,
+    choice: Choice,
+    impurities: tuple[str, ...],
+    molar_mass: Mapping[str, float],
+    library: Library,
+    draws: Draws,
+) -> tuple[Setting, Schedule]:
+    """Return what the contacts of a choice share, and its temperature over time."""
+    time = np.stack(np.broadcast_arrays(*(sample(draws, t) for t, _ in choice.profile)))
+    T = np.stack(np.broadcast_arrays(*(sample(draws, temperature) for _, temperature in choice.profile)))
+    time, T = np.maximum.accumulate(time, axis=0), np.asarray(T)
+    phase = "liquid" if choice.process in ("melt", "cast") else phase_at(library, lot.host, float(np.median(T.max(axis=0))))
+    if phase == "liquid":
+        melting = _melting(library, lot.host)
+        T = np.maximum(T, melting)
+    schedule = Schedule(time, T)
+    low, high = float(T.min()), float(T.max())
+    knots = np.array([low]) if high - low < 0.5 else 1.0 / np.linspace(1.0 / low, 1.0 / high, KNOTS)
+    row = library.find("hosts", host=lot.host, phase=phase)
+    if isinstance(row, Gap):
+        raise LookupError(f"the host table has no row for {lot.host} as {phase}")
+    fields = row.record.fields
+    density = fields["density_kg_per_m3"] - fields["density_slope_kg_per_m3_K"] * (high - fields["T_ref_K"])
+    density = density * np.exp(row.record.spread * normal(draws, row.record.quantity)[0])
+    mass = sample(draws, lot.mass)
+    setting = Setting(
+        library, draws, lot, choice, phase, impurities, molar_mass, knots, time[-1] - time[0],
+        mass / molar_mass[lot.host], density / molar_mass[lot.host],
+    )
+    return setting, schedule
+
+
+def pass_step(
+    state: State,
+    choice: Choice,
+    lot: Lot,
+    impurities: tuple[str, ...],
+    molar_mass: Mapping[str, float],
+    library: Library,
+    draws: Draws,
+    *,
+    history: bool = False,
+) -> Passed:
+    """Move a lot through one choice.
+
+    Parameters
+    ----------
+    state : State
+        As the lot enters, draw by draw.
+    choice : Choice
+    lot : Lot
+    impurities : tuple of str
+        Elements followed, in the order of `state`.
+    molar_mass : mapping
+        kg/mol of the host and the impurities.
+    library : Library
+    draws : Draws
+    history : bool
+
+    Returns
+    -------
+    Passed
+    """
+    setting, schedule = make_setting(lot, choice, impurities, molar_mass, library, draws)
+    exposed = tuple(expose(contact, setting) for contact in choice.contacts)
+    entered = _enter(state, setting, exposed)
+    n = draws.n
+    ledger = np.zeros((len(exposed), len(impurities), n))
+    for c, one in enumerate(exposed):
+        if one.gain is not None:
+            ledger[c] += one.gain
+    parts = _move(entered, setting, schedule, exposed, history)
+    return _gather(state, entered, setting, schedule, exposed, ledger, parts)
+
+
+def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:
+    """Melting folds surface, films and profile into the bath; on a solid what is brought stays at the surface."""
+    n = setting.draws.n
+    gains = [one.gain for one in exposed if one.gain is not None]
+    brought = sum((np.broadcast_to(g, (len(setting.impurities), n)) for g in gains), np.zeros((len(setting.impurities), n)))
+    surface = np.zeros_like(brought) if state.surface is None else state.surface
+    if setting.liquid:
+        return State(state.x + surface + brought, state.suspended)
+    return replace(state, surface=surface + brought)
+
+
+@dataclass(frozen=True, slots=True)
+class _Part:
+    """One group of tied elements and what became of it."""
+
+    index: Array
+    rows: tuple[int, ...]
+    pickup: Pickup
+    skins: tuple[Skin, ...]
+
+
+def _move(
+    entered: State, setting: Setting, schedule: Schedule, exposed: Sequence[Exposed], history: bool
+) -> list[_Part]:
+    exposures = [one.exposure for one in exposed]
+    watched = _watched(setting)
+    active: list[Skin] = []
+    parts: list[_Part] = []
+    for _ in range(ROUNDS):
+        parts = [
+            _advance(entered, setting, schedule, exposures, index, [s for s in active if s.nu[index].any()], history)
+            for index in tied(exposures, active, len(setting.impurities))
+        ]
+        x = _collect(entered.x, parts)
+        near = _within_reach(watched, x, {s.name for s in active})
+        beyond = [s for s in (_skin(setting, f) for f in near) if _saturation(s, x, setting, schedule).max() > BEYOND]
+        if not beyond:
+            break
+        active = [*active, *beyond]
+    return parts
+
+
+def tied(exposures: Sequence[Exposure], skins: Iterable[Skin], count: int) -> list[Array]:
+    """Group elements that some carrier or skin ties together.
+
+    Parameters
+    ----------
+    exposures : sequence of Exposure
+    skins : iterable of Skin
+    count : int
+        Number of elements.
+
+    Returns
+    -------
+    list of int arrays
+        Indices, each element in one group; groups without any carrier are left out.
+    """
+    parent = list(range(count))
+    touched: set[int] = set()
+
+    def root(i: int) -> int:
+        while parent[i] != i:
+            i = parent[i]
+        return i
+
+    units: list[Carrier | Skin] = [c for e in exposures for c in e.carriers]
+    for unit in [*units, *skins]:
+        members = np.flatnonzero(unit.nu).tolist()
+        touched |= set(members)
+        for other in members[1:]:
+            parent[root(other)] = root(members[0])
+    touched |= {int(i) for e in exposures for film in e.films for i in np.flatnonzero(film.nu)}
+    groups: dict[int, list[int]] = {}
+    for i in sorted(touched):
+        groups.setdefault(root(i), []).append(i)
+    return [np.array(members) for members in groups.values()]
+
+
+def _advance(
+    entered: State,
+    setting: Setting,
+    schedule: Schedule,
+    exposures: Sequence[Exposure],
+    index: Array,
+    skins: Sequence[Skin],
+    history: bool,
+) -> _Part:
+    """Move one group of tied elements."""
+    rows, sub = [], []
+    for c, exposure in enumerate(exposures):
+        part = restrict(exposure, index)
+        if part.carriers or part.films:
+            rows.append(c)
+            sub.append(part)
+    own = tuple(Skin(s.name, s.nu[index], s.ln_k) for s in skins)
+    if own and sub:
+        sub[0] = replace(sub[0], skins=own)
+    state = State(
+        entered.x[index], entered.suspended[index],
+        None if entered.profile is None else entered.profile[index], entered.film, entered.films,
+        None if entered.surface is None else entered.surface[index],
+    )
+    diffusivity = None
+    if not setting.liquid:
+        diffusivity = _diffusivity(setting, index)
+    host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
+    pickup = advance(state, host, setting.choice.form, schedule, sub, history=history, nodes=NODES)
+    return _Part(index, tuple(rows), pickup, tuple(skins))
+
+
+def restrict(exposure: Exposure, index: Array) -> Exposure:
+    """Return the exposure as some of the elements see it."""
+    exchange = Curve(exposure.exchange.T, exposure.exchange.ln[index])
+    carriers = tuple(
+        replace(carrier, nu=carrier.nu[index]) for carrier in exposure.carriers if carrier.nu[index].any()
+    )
+    films = tuple(replace(film, nu=film.nu[index]) for film in exposure.films if film.nu[index].any())
+    return replace(exposure, exchange=exchange, carriers=carriers, skins=(), films=films)
+
+
+def _diffusivity(setting: Setting, index: Array) -> Curve:
+    from purity.contacts.setting import diffusivity
+
+    rows = []
+    for i in index:
+        found = diffusivity(setting, setting.impurities[int(i)])
+        rows.append(np.full((len(setting.T), 1), -np.inf) if isinstance(found, Gap) else found[0])
+    return Curve(setting.T, np.stack(np.broadcast_arrays(*rows)))
+
+
+def _collect(x: Array, parts: Sequence[_Part]) -> Array:
+    after = x.copy()
+    for part in parts:
+        after[part.index] = part.pickup.state.x
+    return after
+
+
+def _saturation(skin: Skin, x: Array, setting: Setting, schedule: Schedule) -> Array:
+    """ln of the saturation of a compound in the metal as it ends, (N,)."""
+    end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
+    return np.asarray(skin.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(skin.ln_k, end))
+
+
+def _watched(setting: Setting) -> dict[str, tuple[Array, float]]:
+    """Return nu (I,) and the lowest nominal ln K of each compound that could form and is no wall."""
+    if not setting.liquid:
+        return {}
+    walls = {f for c in setting.choice.contacts for f in getattr(c.body, "phases", {})}
+    T = setting.T[:, np.newaxis]
+    watched = {}
+    for formula in _solids(setting.library):
+        nu = stoichiometry(setting, formula)
+        if formula in walls or nu is None or not nu.any():
+            continue
+        energy = ln_dissolution(
+            setting.library, setting.host, setting.phase, formula, "solid", T, Draws.nominal()
+        )
+        if not isinstance(energy, Gap):
+            watched[formula] = (nu, float(energy.value.min()))
+    return watched
+
+
+def _within_reach(watched: Mapping[str, tuple[Array, float]], x: Array, known: set[str]) -> list[str]:
+    """Return the compounds whose saturation the spread of their records could make up for."""
+    highest = np.log(np.maximum(x.max(axis=-1), 1e-30))
+    return [f for f, (nu, ln_k) in watched.items() if f not in known and float(nu @ highest) - ln_k > -REACH]
+
+
+def _skin(setting: Setting, formula: str) -> Skin:
+    energy = ln_dissolution(
+        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:, np.newaxis], setting.draws
+    )
+    nu = stoichiometry(setting, formula)
+    assert not isinstance(energy, Gap) and nu is not None
+    return Skin(formula, nu, Curve(setting.T, energy.value))
+
+
+def _solids(library: Library) -> list[str]:
+    return sorted({r.quantity.split(":")[1].rsplit("/", 2)[0] for r in library.rows("gibbs", state="solid")})
+
+
+def _melting(library: Library, host: str) -> float:
+    found = library.find("transitions", element=host, kind="melting", to_state="liquid")
+    if isinstance(found, Gap):
+        raise LookupError(f"the table of transitions has no melting point of {host}")
+    return found.record.fields["T_K"]
+
+
+def _gather(
+    state: State,
+    entered: State,
+    setting: Setting,
+    schedule: Schedule,
+    exposed: tuple[Exposed, ...],
+    ledger: Array,
+    parts: Sequence[_Part],
+) -> Passed:
+    """Put the groups together again, with what is known of each element."""
+    n, count = setting.draws.n, len(setting.impurities)
+    x, suspended = entered.x.copy(), entered.suspended.copy()
+    surface = None if entered.surface is None else entered.surface.copy()
+    film: dict[str, Array] = {}
+    shares = np.zeros((len(HELD_BACK_BY), count))
+    attacked, flags = np.zeros(n, dtype=bool), np.zeros(n, dtype=bool)
+    formed: dict[str, tuple[str, ...]] = {}
+    series: dict[str, tuple[Array, Array]] = {}
+    for part in parts:
+        done = part.pickup
+        x[part.index], suspended[part.index] = done.state.x, done.state.suspended
+        if done.state.surface is not None and surface is not None:
+            surface[part.index] = done.state.surface
+        if done.state.film is not None:
+            film |= dict(zip(done.state.films, done.state.film, strict=True))
+        for c, row in zip(part.rows, done.ledger[: len(part.rows)], strict=True):
+            ledger[c][part.index] += row
+        shares[:, part.index] = np.median(done.shares, axis=-1)
+        attacked |= done.attacked
+        flags |= done.flags
+        for skin in part.skins:
+            if skin.name in done.formed:
+                for i in np.flatnonzero(skin.nu):
+                    formed[setting.impurities[i]] = (*formed.get(setting.impurities[i], ()), skin.name)
+        if done.history is not None and done.times is not None:
+            for row, i in enumerate(part.index):
+                series[setting.impurities[int(i)]] = (done.times, done.history[row])
+    after = State(
+        x, suspended, None, np.stack(list(film.values())) if film else None, tuple(film), surface
+    )
+    loss, loss_records = _host_loss(setting, schedule, exposed)
+    after, ledger = _enrich(after, ledger, setting, loss)
+    return Passed(
+        setting.choice, setting.impurities, tuple(one.exposure.contact for one in exposed), state, after, ledger,
+        setting, exposed, _records(setting, exposed, parts, loss_records), _gaps(exposed), shares, formed, attacked,
+        flags, max((part.pickup.error for part in parts), default=0.0), loss,
+        np.broadcast_to(schedule.T.max(axis=0), (n,)), series,
+        tuple(dict.fromkeys(note for one in exposed for note in one.notes)),
+    )
+
+
+def _host_loss(
+    setting: Setting, schedule: Schedule, exposed: Sequence[Exposed]
+) -> tuple[Array, tuple[Found, ...]]:
+    """Share of the host that evaporates, (N,)."""
+    lost = np.zeros(setting.draws.n)
+    records: tuple[Found, ...] = ()
+    for contact in setting.choice.contacts:
+        if contact.role != "gas" or not setting.liquid:
+            continue
+        found = host_evaporation(contact, setting)
+        if isinstance(found, Gap):
+            continue
+        rate = Curve(setting.T, np.log(np.maximum(found[0], 1e-300)))
+        lost = lost + _time_integral(rate, schedule) / setting.amount
+        records = (*records, *found[1])
+    return np.minimum(lost, 1.0), records
+
+
+def _time_integral(rate: Curve, schedule: Schedule) -> Array:
+    parts = [curve_integral(rate, s.T1, s.T2, s.duration) for s in segments(schedule)]
+    return np.asarray(sum(parts, np.zeros(1)))
+
+
+def _enrich(after: State, ledger: Array, setting: Setting, loss: Array) -> tuple[State, Array]:
+    """What stays behind while the host leaves is counted on less metal."""
+    if not np.any(loss > 0):
+        return after, ledger
+    factor = 1.0 / np.maximum(1.0 - loss, 0.05)
+    gas = next(c for c, contact in enumerate(setting.choice.contacts) if contact.role == "gas")
+    richer = replace(after, x=after.x * factor, suspended=after.suspended * factor)
+    ledger = ledger.copy()
+    ledger[gas] += total(richer) - total(after)
+    return richer, ledger
+
+
+def _records(
+    setting: Setting, exposed: Sequence[Exposed], parts: Sequence[_Part], loss: tuple[Found, ...]
+) -> dict[str, tuple[Found, ...]]:
+    """Every record that a number of an element hangs on: those of all elements tied to it."""
+    row = setting.library.find("hosts", host=setting.host, phase=setting.phase)
+    density = () if isinstance(row, Gap) else (row,)
+    records: dict[str, dict[str, Found]] = {element: {} for element in setting.impurities}
+    for part in parts:
+        members = [setting.impurities[int(i)] for i in part.index]
+        used: list[Found] = [*density, *loss]
+        for one in exposed:
+            touching = [c for c in one.exposure.carriers if c.nu[part.index].any()]
+            for carrier in touching:
+                used.extend(one.carrier_records.get(carrier.name, ()))
+            if touching or one.exposure.films:
+                for member in members:
+                    used.extend(one.element_records.get(member, ()))
+        for skin in part.skins:
+            used.extend(_skin_records(setting, skin.name))
+        for member in members:
+            records[member] |= {found.record.quantity: found for found in used}
+    for one in exposed:
+        if one.gain is None:
+            continue
+        for element, found in one.element_records.items():
+            if element in records:
+                records[element] |= {f.record.quantity: f for f in found}
+    return {element: tuple(found.values()) for element, found in records.items()}
+
+
+def _skin_records(setting: Setting, formula: str) -> tuple[Found, ...]:
+    energy = ln_dissolution(
+        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:1, np.newaxis], Draws.nominal()
+    )
+    return () if isinstance(energy, Gap) else energy.found
+
+
+def _gaps(exposed: Sequence[Exposed]) -> dict[str, tuple[Gap, ...]]:
+    gaps: dict[str, tuple[Gap, ...]] = {}
+    for one in exposed:
+        for element, found in one.gaps.items():
+            gaps[element] = (*gaps.get(element, ()), *found)
+    return gaps
