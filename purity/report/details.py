@@ -30,7 +30,7 @@ def notes(choice: ChoiceResult, *, methods: bool) -> Iterator[str]:
     if outside:
         yield f"records used outside their range (band widened): {', '.join(outside)}"
     for line in lines:
-        if line.gap:
+        if line.gap and line.pickup is None:
             yield f"{line.impurity}: {line.gap}"
     if choice.host_loss_percent is not None and choice.host_loss_percent >= 0.01:
         yield f"metal lost: {words.figures(choice.host_loss_percent)} %"

@@ -175,7 +175,11 @@ def _apart(step: StepResult) -> Iterator[RenderableType]:
     for choice in step.choices:
         counted = f"{choice.assessed[0]} of {choice.assessed[1]} assessed"
         if choice.state == "not ranked":
-            missing = [f"{x.impurity} ({x.gap})" for x in choice.lines if x.gap and x.pickup is None]
+            missing = [
+                f"{line.impurity} ({line.gap.removeprefix('no data: ')})"
+                for line in choice.lines
+                if line.gap and line.pickup is None
+            ]
             reason = "; ".join(missing or choice.warnings or ["the contact itself"])
             yield _indented(f"not ranked: {choice.name}, {counted}, no data for {reason}")
         elif choice.state == "attacked":
@@ -203,16 +207,19 @@ def _elements(choice: ChoiceResult, width: int, detail: bool) -> Iterator[Render
 
 
 def worst_first(lines: Iterable[Line]) -> list[Line]:
-    """Order lines by chance over, then by spent, then by name; what is unknown comes first."""
-    return sorted(
-        lines,
-        key=lambda line: (
+    """Order lines: limits that nothing can be said of, then by chance over and spent; last what has no limit."""
+
+    def place(line: Line) -> tuple[bool, bool, float, float, str]:
+        used = line.spent if line.spent is not None else 1e9 * (line.word == "closed")
+        return (
+            line.limit is None,
             line.chance_over is not None,
             -(line.chance_over or 0.0),
-            -(line.spent if line.spent is not None else float(line.word == "closed") * 1e9),
+            -used,
             line.impurity,
-        ),
-    )
+        )
+
+    return sorted(lines, key=place)
 
 
 def _blocks(choice: ChoiceResult, width: int) -> Iterator[Table]:
@@ -252,9 +259,11 @@ def _cells(line: Line, *, wide: bool) -> tuple[str, ...]:
 
 
 def _chance(line: Line) -> str:
-    if line.chance_over is None and line.end is None and line.pickup is not None:
+    if line.limit is None:
+        return "no limit"
+    if line.end is None and line.pickup is not None:
         return "uncertified"
-    return "no limit" if line.limit is None else words.chance(line.chance_over, line.chance_error)
+    return words.chance(line.chance_over, line.chance_error)
 
 
 def _routes(result: Result, width: int) -> Iterator[RenderableType]:
