@@ -13,8 +13,9 @@ PACKAGE = ROOT / "purity"
 NUMBERS = {"errors", "constants"}
 KINETICS_BASE = {"kinetics.exposure", "kinetics.arrhenius", "kinetics.schedule", "kinetics.transfer"}
 DRIVING_FORCE = {
-    f"driving_force.{n}" for n in ("solution", "substances", "species", "equilibrium", "estimate")
+    f"driving_force.{n}" for n in ("solution", "substances", "species", "equilibrium", "estimate", "sensitivity", "nonideal")
 }
+EQUILIBRIUM = {f"driving_force.{n}" for n in ("components", "interior", "newton", "problem")}
 CONTACTS = {"contacts", "contacts.*"}
 BELOW_CONTACTS = NUMBERS | {"scenario", "database", "draws", "composition"}
 BELOW_ASSESS = (
@@ -45,7 +46,8 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.particles": NUMBERS,
     "kinetics.casting": NUMBERS,
     "kinetics.laplace": NUMBERS,
-    "kinetics.modes": NUMBERS,
+    "kinetics.modes": NUMBERS | {"kinetics.laplace"},
+    "kinetics.march": NUMBERS | {"kinetics.modes"},
     "kinetics.surface": NUMBERS | KINETICS_BASE,
     "kinetics.pieces": NUMBERS
     | KINETICS_BASE
@@ -57,7 +59,13 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.films": NUMBERS | KINETICS_BASE | {"scenario"},
     "kinetics.advance": NUMBERS | {"scenario", "kinetics.*"},
     "driving_force.solution": NUMBERS,
-    "driving_force.equilibrium": NUMBERS,
+    "driving_force.components": NUMBERS,
+    "driving_force.interior": NUMBERS | {"driving_force.components"},
+    "driving_force.newton": NUMBERS | {"driving_force.components", "driving_force.interior"},
+    "driving_force.problem": NUMBERS | {"driving_force.components"},
+    "driving_force.equilibrium": NUMBERS | EQUILIBRIUM,
+    "driving_force.sensitivity": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
+    "driving_force.nonideal": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
     "driving_force.substances": NUMBERS
     | {"database", "draws", "driving_force.solution", "driving_force.equilibrium"},
     "driving_force.estimate": NUMBERS
@@ -81,10 +89,20 @@ ALLOWED: dict[str, set[str]] = {
     "affinity": BELOW_ASSESS | {"assess"},
     "new": BELOW_ASSESS | {"assess"},
     "scenario_lines": {"errors"},
-    "scenario_schema": NUMBERS | {"scenario", "quantities", "units"},
-    "scenario_names": NUMBERS | {"scenario", "database", "composition", "scenario_lines"},
+    "scenario_schema": NUMBERS | {"scenario", "quantities", "scenario_lines"},
+    "scenario_names": NUMBERS
+    | {"scenario", "database", "composition", "quantities", "scenario_lines", "scenario_schema"},
+    "scenario_forms": NUMBERS | {"scenario", "database", "scenario_lines", "scenario_schema", "scenario_names"},
     "scenario_contacts": NUMBERS
-    | {"scenario", "database", "quantities", "scenario_lines", "scenario_schema", "scenario_names"},
+    | {
+        "scenario",
+        "database",
+        "quantities",
+        "scenario_lines",
+        "scenario_schema",
+        "scenario_names",
+        "scenario_forms",
+    },
     "scenario_file": NUMBERS
     | {
         "scenario",
@@ -93,6 +111,7 @@ ALLOWED: dict[str, set[str]] = {
         "scenario_lines",
         "scenario_schema",
         "scenario_names",
+        "scenario_forms",
         "scenario_contacts",
     },
     "report.*": {"result", "report.*"},

@@ -1,0 +1,246 @@
+"""Newton's method on a known assemblage, in component substances: gives the accuracy of an equilibrium.
+
+Balances are written over component substances with exact coefficients, each as a logarithm of a ratio of two
+sums of positive terms, so that contents of parts per trillion keep all their digits beside moles of wall.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.driving_force.components import Basis, Layout
+from purity.driving_force.interior import mix
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+Draws = dict[str, NDArray[np.float64]]
+
+#: Saturation above which an absent phase is added, in ln.
+ADMIT = 1e-9
+_EPS = float(np.finfo(float).eps)
+
+
+@dataclass(frozen=True, slots=True)
+class Polished:
+    """Answer of the method, one column a draw.
+
+    Parameters
+    ----------
+    lam : (C, N) array
+        Potentials of the components over RT.
+    u, n : (S, N) arrays
+        ln activity, and mol of each species.
+    active, done : bool arrays
+        (P, N) and (N,).
+    rounding : (N,) array
+        Estimated rounding error of ln activity; 0 where not done.
+    """
+
+    lam: Array
+    u: Array
+    n: Array
+    active: Mask
+    done: Mask
+    rounding: Array
+
+
+def _evaluate(layout: Layout, base: Basis, d: Draws, active: Mask) -> Draws:
+    a, k = base.species, layout.closed
+    u: Array = a @ d["lam"] - d["g"]
+    total, x = mix(layout, u)
+    n: Array = np.empty_like(u)
+    n[:k] = np.where(active, d["size"], 0.0)[layout.phase[:k]] * x[:k]
+    n[k:] = d["volume"] * np.exp(np.minimum(u[k:], 600.0))
+    b = d["b"]
+    plus: Array = np.maximum(a, 0.0).T @ n + np.maximum(-b, 0.0)
+    minus: Array = np.maximum(-a, 0.0).T @ n + np.maximum(b, 0.0)
+    # A component that nothing holds (held to 0 = 0) keeps both sums equal.
+    plus, minus = np.maximum(plus, 1e-300), np.maximum(minus, 1e-300)
+    return {"u": u, "x": x, "n": n, "f": total, "plus": plus, "minus": minus, "e": np.log(plus / minus)}
+
+
+def _slots(active: Mask) -> tuple[NDArray[np.intp], Mask]:
+    """Active phases of each draw, listed first: positions (A, N) and which of them count."""
+    width = int(active.sum(axis=0).max(initial=0))
+    index = np.argsort(~active, axis=0, kind="stable")[:width]
+    return index, np.take_along_axis(active, index, axis=0)
+
+
+def jacobian(layout: Layout, base: Basis, point: Draws, active: Mask) -> tuple[Array, Array]:
+    """Build the matrix of balances and saturations against potentials and ln amounts.
+
+    Parameters
+    ----------
+    layout, base
+    point : mapping
+        Composition x, amounts n, sums plus and minus of the balances.
+    active : (P, N) bool array
+
+    Returns
+    -------
+    (N, C + A, C + A) array, (P, C, N) array
+        Absent phases fill up with rows of the unit matrix. The second array is d E / d ln N of every phase.
+    """
+    a, n, x = base.species, point["n"], point["x"]
+    c, draws = a.shape[1], n.shape[1]
+    up, down = np.maximum(a, 0.0), np.maximum(-a, 0.0)
+    pair_up: Array = (up[:, :, None] * a[:, None, :]).reshape(len(a), -1)
+    pair_down: Array = (down[:, :, None] * a[:, None, :]).reshape(len(a), -1)
+    square: Array = (pair_up.T @ n).reshape(c, c, draws) / point["plus"][:, None]
+    square -= (pair_down.T @ n).reshape(c, c, draws) / point["minus"][:, None]
+    mean: Array = np.empty((len(layout.edges), c, draws))
+    flow: Array = np.empty_like(mean)
+    for p, (i, j) in enumerate(layout.edges):
+        mean[p] = a[i:j].T @ x[i:j]
+        flow[p] = (up[i:j].T @ n[i:j]) / point["plus"] - (down[i:j].T @ n[i:j]) / point["minus"]
+        square -= flow[p][:, None] * mean[p][None, :]
+    index, valid = _slots(active)
+    rows = len(index)
+    out: Array = np.zeros((draws, c + rows, c + rows))
+    out[:, :c, :c] = square.transpose(2, 0, 1)
+    cols = np.arange(draws)
+    for q in range(rows):
+        out[:, :c, c + q] = np.where(valid[q], flow[index[q], :, cols].T, 0.0).T
+        out[:, c + q, :c] = np.where(valid[q], mean[index[q], :, cols].T, 0.0).T
+        out[:, c + q, c + q] = np.where(valid[q], 0.0, 1.0)
+    return out, flow
+
+
+def _scales(matrix: Array) -> tuple[Array, Array]:
+    row: Array = 1.0 / np.maximum(np.abs(matrix).max(axis=2), 1e-300)
+    col: Array = 1.0 / np.maximum((np.abs(matrix) * row[:, :, None]).max(axis=1), 1e-300)
+    return row, col
+
+
+def solve(matrix: Array, right: Array) -> Array:
+    """Solve scaled systems; least squares where a matrix is singular.
+
+    Parameters
+    ----------
+    matrix : (N, M, M) array
+    right : (N, M, K) array
+
+    Returns
+    -------
+    (N, M, K) array
+    """
+    row, col = _scales(matrix)
+    scaled: Array = matrix * row[:, :, None] * col[:, None, :]
+    load: Array = right * row[:, :, None]
+    try:
+        answer: Array = np.linalg.solve(scaled, load)
+    except np.linalg.LinAlgError:
+        answer = np.full_like(load, np.inf)
+    # A potential that no present phase fixes, or more pure phases than potentials.
+    wild = ~(np.abs(answer).max(axis=(1, 2)) < 1e8 * np.maximum(np.abs(load).max(axis=(1, 2)), 1e-300))
+    if wild.any():
+        answer[wild] = np.linalg.pinv(scaled[wild], rcond=1e-12) @ load[wild]
+    return answer * col[:, :, None]
+
+
+def _rounding(matrix: Array, base: Basis) -> Array:
+    """Error of ln activity when every balance is off by one unit in the last place."""
+    c = base.species.shape[1]
+    unit = np.zeros((len(matrix), matrix.shape[1], c))
+    unit[:, np.arange(c), np.arange(c)] = 1.0
+    inverse = solve(matrix, unit)[:, :c]
+    worst: Array = np.abs(base.species @ inverse).sum(axis=2).max(axis=1)
+    return worst * _EPS
+
+
+def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> Mask:
+    """One Newton step in place; returns the phases that are left."""
+    matrix, _ = jacobian(layout, base, point, active)
+    index, valid = _slots(active)
+    c = len(d["lam"])
+    f: Array = np.where(valid, np.take_along_axis(point["f"], index, axis=0), 0.0)
+    right: Array = -np.concatenate([point["e"], f]).T[:, :, None]
+    move: Array = solve(matrix, right)[:, :, 0].T
+    largest: Array = np.abs(move[:c]).max(axis=0)
+    move *= np.minimum(1.0, 15.0 / np.maximum(largest, 1e-300))
+    d["lam"] = d["lam"] + move[:c]
+    q: Array = np.zeros_like(d["size"])
+    np.put_along_axis(q, index, np.where(valid, move[c:], 0.0), axis=0)
+    d["size"] = d["size"] * np.where(q < -0.9, 0.1, 1.0 + q)
+    left: Mask = active & ~((d["size"] < 1e-13 * d["weight"]) & (q < 0.0))
+    return left
+
+
+def _measure(d: Draws, point: Draws, active: Mask) -> tuple[Mask, Mask]:
+    """Draws that are solved to rounding, and draws that ran away."""
+    off_e = np.abs(point["e"]).max(axis=0)
+    off_f = np.where(active, np.abs(point["f"]), 0.0).max(axis=0, initial=0.0)
+    settled: Mask = (off_e < d["tol_e"]) & (off_f < d["tol_f"])
+    return settled, ~np.isfinite(off_e + off_f + np.abs(d["size"]).max(axis=0, initial=0.0))
+
+
+def _admit(d: Draws, point: Draws, active: Mask, settled: Mask) -> Mask:
+    """Draws whose assemblage is stable; where it is not, the most oversaturated phase is added in place."""
+    over: Array = np.where(active, -np.inf, point["f"])
+    worst = over.argmax(axis=0) if len(over) else np.zeros(len(settled), dtype=np.intp)
+    cols = np.arange(len(settled))
+    unstable = settled & (over[worst, cols] > ADMIT)
+    where = (worst[unstable], cols[unstable])
+    active[where] = True
+    d["size"][where] = 1e-6 * d["weight"][where]
+    good: Mask = settled & ~unstable
+    return good
+
+
+def polish(
+    layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: int = 75, change: bool = True
+) -> Polished:
+    """Solve balances and saturations of the active phases to rounding, and prove the assemblage.
+
+    Parameters
+    ----------
+    layout : Layout
+    base : Basis
+    draws : mapping
+        ``g`` (S, N), ``b`` (C, N) mol of each component, ``weight`` and ``size`` (P, N), ``volume`` (N,),
+        ``lam`` (C, N) first guess of the component potentials.
+    active : (P, N) bool array
+        First guess of the stable phases.
+    limit : int
+        Iterations.
+    change : bool
+        False: the assemblage may not change.
+
+    Returns
+    -------
+    Polished
+    """
+    d = dict(draws)
+    count = d["g"].shape[1]
+    span = np.abs(d["g"]).max(axis=0)
+    d |= {"tol_e": 1e-12 + 4e-15 * span, "tol_f": 2e-14 * (1.0 + span)}
+    now, live = active.copy(), np.arange(count)
+    lam, last = d["lam"].copy(), np.zeros_like(active)
+    u, n = np.zeros_like(d["g"]), np.zeros_like(d["g"])
+    done, rounding = np.zeros(count, dtype=bool), np.zeros(count)
+    for _ in range(limit):
+        point = _evaluate(layout, base, d, now)
+        settled, lost = _measure(d, point, now)
+        before = now.copy()
+        good = _admit(d, point, now, settled)
+        leave = good | lost
+        if not change:
+            leave |= (now != before).any(axis=0)
+        if leave.any():
+            out, keep = live[leave], ~leave
+            part = {key: value[..., good] for key, value in point.items()}
+            rounding[live[good]] = _rounding(jacobian(layout, base, part, now[:, good])[0], base)
+            lam[:, out], last[:, out], done[out] = d["lam"][:, leave], now[:, leave], good[leave]
+            u[:, out], n[:, out] = point["u"][:, leave], point["n"][:, leave]
+            if not keep.any():
+                break
+            live, before = live[keep], before[:, keep]
+            d, now = {key: value[..., keep] for key, value in d.items()}, now[:, keep]
+            point = {key: value[..., keep] for key, value in point.items()}
+        if (now != before).any():
+            point = _evaluate(layout, base, d, now)
+        now = _step(layout, base, d, point, now)
+    return Polished(lam, u, n, last, done, rounding)
