@@ -22,7 +22,7 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
         "density_slope_kg_per_m3_K": (0.01, 4.0),
         "T_ref_K": (200.0, 4000.0),
         "viscosity_A_ln_Pa_s": (-12.0, -5.0),
-        "viscosity_B_K": (200.0, 12000.0),
+        "viscosity_B_K": (200.0, 16000.0),
         "viscosity_spread_ln": (0.01, 0.7),
     },
     "transitions": {"T_K": (10.0, 7000.0), "dH_J_per_mol": (0.0, 1e6)},

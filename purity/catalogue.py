@@ -126,7 +126,7 @@ def _shown(library: Library, record: Record, T: float) -> Shown:
         low, high = value * exp(-record.spread), value * exp(record.spread)
     elif value is not None and spec.spread == "spread":
         low, high = value - record.spread, value + record.spread
-    source = library.sources.get(record.source, {})
+    cited = [library.sources[key] for key in record.source.split(";") if key in library.sources]
     return Shown(
         quantity=record.quantity + (f" at {at:g} K" if "T_K" in record.fields else ""),
         value=value,
@@ -136,8 +136,8 @@ def _shown(library: Library, record: Record, T: float) -> Shown:
         T_min=record.T_min if spec.ranged else None,
         T_max=record.T_max if spec.ranged else None,
         outside=bool(outside(record, at)),
-        citation=source.get("citation", record.source),
-        address=source.get("address", ""),
+        citation="; ".join(source["citation"] for source in cited),
+        address="; ".join(source["address"] for source in cited if source["address"]),
         where=record.where,
         origin=record.origin,
         quality=record.quality,
@@ -152,7 +152,8 @@ def _shown(library: Library, record: Record, T: float) -> Shown:
 
 def bibliography(library: Library, quantities: Iterable[str]) -> tuple[tuple[str, str, str], ...]:
     """Return key, citation and address of the sources behind the records in use, each once."""
-    keys = dict.fromkeys(library.rivals(name)[0].source for name in quantities if library.rivals(name))
+    used = [library.rivals(name)[0] for name in quantities if library.rivals(name)]
+    keys = dict.fromkeys(key for record in used for key in record.source.split(";"))
     return tuple(
         (key, source["citation"], source["address"])
         for key in keys

@@ -4,9 +4,10 @@ Every table is a CSV file in ``purity/data`` (or in a user's folder); :mod:`puri
 form and their rules. A library is immutable and passed as an argument; there is none at module level.
 
 Rank of rivals: rank 1 is used. Where several sources give one quantity the order is that of a row
-marked as preferred by the compiler, then looked-up before derived or computed, memory and estimate,
-then the narrower spread, then the range nearer the usual process temperature. ``prefer`` names
-sources that go before all ranks.
+that a comparison of sources prefers, then looked-up before derived or computed, memory and estimate,
+then the narrower spread at the usual process temperature (0.75 of the melting point of a solid host,
+100 K above it for a melt; a range far from it widens the spread). ``prefer`` names sources that go
+before all ranks.
 """
 
 from __future__ import annotations
@@ -124,7 +125,7 @@ class Library:
         quantity = quantity_name(table, [key[column] for column in spec.key])
         records = self._index.get(quantity, ())
         if records:
-            return Found(records[0], records[1:], "yours" if records[0].yours else "measured")
+            return Found(records[0], records[1:], _how(records[0]))
         known = tuple(name for name in dict.fromkeys(r.quantity for r in self.tables.get(table, ())))
         return Gap(quantity, f"no record in the table {table}", _nearest(quantity, known))
 
@@ -204,6 +205,12 @@ class Library:
         )
 
 
+def _how(record: Record) -> How:
+    if record.yours:
+        return "yours"
+    return "estimate" if record.origin == "estimate" else "measured"
+
+
 def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Library:
     """Read the tables of the package and a user's folder over them.
 
@@ -262,12 +269,17 @@ def _library(
         ordered[name] = tuple(
             sorted(
                 tables.get(name, ()),
-                key=lambda r: (not {r.source, f"{r.quantity}={r.source}"} & chosen, r.rank),
+                key=lambda r: (not _preferred(r, chosen), r.rank),
             )
         )
         for record in ordered[name]:
             index.setdefault(record.quantity, []).append(record)
     return Library(ordered, sources, data_hash, prefer, {name: tuple(rows) for name, rows in index.items()})
+
+
+def _preferred(record: Record, chosen: set[str]) -> bool:
+    keys = record.source.split(";")
+    return any(key in chosen or f"{record.quantity}={key}" in chosen for key in keys)
 
 
 def _preferences(

@@ -203,7 +203,9 @@ class Record:
         One sigma, in the sense of the table's spread column (0 where it has none).
     T_min, T_max : float
         Range of validity, K (0 and infinity where the table has none).
-    source, where, origin : str
+    source : str
+        Key of a source, or several with ``;`` between.
+    where, origin : str
     quality : str
         Class made from origin and spread: A looked up and narrow (one sigma below 35 % or 2 kJ/mol);
         B looked up, or derived or computed from numbers that were; C from memory; D estimate.
