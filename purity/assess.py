@@ -26,7 +26,8 @@ from purity.kinetics.advance import State
 from purity.lines import Column, block, columns, counts, group_columns, group_line, line, to_ppm
 from purity.passing import Passed, pass_step, total
 from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StepResult
-from purity.risk import Standing, load, standings, state as standing_state
+from purity.risk import Standing, load, standings
+from purity.risk import state as standing_state
 from purity.scenario import Choice, Given, Lot, Material, Scenario, scenario_hash
 from purity.uncertainty import assumed_share, band, drivers
 
@@ -66,7 +67,12 @@ def assess(
     impurities = followed(scenario)
     molar_mass = molar_masses(library, (scenario.lot.host, *impurities))
     run = partial(
-        pass_step, lot=scenario.lot, impurities=impurities, molar_mass=molar_mass, library=library, draws=draws,
+        pass_step,
+        lot=scenario.lot,
+        impurities=impurities,
+        molar_mass=molar_mass,
+        library=library,
+        draws=draws,
         history=history,
     )
     start = initial(scenario.lot, impurities, molar_mass, library, draws)
@@ -84,7 +90,12 @@ def assess(
     gaps = tuple(
         dict.fromkeys(gap_text(g) for one in walked.values() for found in one.gaps.values() for g in found)
     )
-    used = {q for one in walked.values() for found in one.records.values() for q in (f.record.source for f in found)}
+    used = {
+        q
+        for one in walked.values()
+        for found in one.records.values()
+        for q in (f.record.source for f in found)
+    }
     return Result(
         Stamp(__version__, library.data_hash, scenario_hash(scenario), draws.seed, draws.n),
         _facts(scenario, walked.values(), draws),
@@ -97,7 +108,7 @@ def assess(
 
 
 def followed(scenario: Scenario) -> tuple[str, ...]:
-    """Return the elements of a run, sorted: certified, limited, gas formers, and what the walls are made of."""
+    """Return the elements of a run, sorted: certified, limited, gas formers, and those of the walls."""
     lot = scenario.lot
     elements = {*counts(lot), *GAS_FORMERS}
     for step in scenario.steps:
@@ -155,7 +166,9 @@ def gap_text(gap: Gap) -> str:
     return f"{gap.quantity}: {gap.reason}{near}"
 
 
-def _run(run: partial[Passed], before: State, choices: Sequence[Choice], executor: Executor | None) -> list[Passed]:
+def _run(
+    run: partial[Passed], before: State, choices: Sequence[Choice], executor: Executor | None
+) -> list[Passed]:
     if executor is None:
         return [run(before, choice) for choice in choices]
     return list(executor.map(run, [before] * len(choices), choices))
@@ -189,7 +202,9 @@ def _weigh(passed: Passed, lot: Lot) -> _Weighed:
     rows = [c for c in rows if c.element not in unknown]
     n = passed.setting.draws.n
     over = np.array([c.end > (c.limit or 0.0) for c in rows]).reshape(len(rows), n)
-    loads = np.array([load(float(np.median(c.start)), c.end, c.limit or 0.0) for c in rows]).reshape(len(rows), n)
+    loads = np.array([load(float(np.median(c.start)), c.end, c.limit or 0.0) for c in rows]).reshape(
+        len(rows), n
+    )
     return _Weighed(tuple(c.element for c in rows), over, loads)
 
 
@@ -213,7 +228,10 @@ def _step_result(
     states = [_standing_state(one, lot) for one in passed]
     weighed = [_weigh(one, lot) for one in passed]
     ranks = standings(
-        [s for s, _ in states], [w.over for w in weighed], [w.loads for w in weighed], blocks  # type: ignore[misc]
+        [s for s, _ in states],
+        [w.over for w in weighed],
+        [w.loads for w in weighed],
+        blocks,  # type: ignore[misc]
     )
     names = [one.choice.name for one in passed]
     done = [
@@ -274,7 +292,9 @@ def _numerical(passed: Passed) -> tuple[str, ...]:
     if passed.error > 1e-2:
         texts.append(f"time steps leave an error of up to {passed.error:.0%} in this choice")
     if passed.flags.any():
-        texts.append(f"{passed.flags.mean():.1%} of the draws were not solved cleanly and are kept as they are")
+        texts.append(
+            f"{passed.flags.mean():.1%} of the draws were not solved cleanly and are kept as they are"
+        )
     return tuple(texts)
 
 
@@ -288,7 +308,9 @@ def _assumed(
         return None, ()
     givens = {g.key: g for one in passed.exposed for g in one.inputs if g.law != "exact"}
     inputs = {key: normal(draws, key)[0] for key in givens}
-    inputs |= {f.record.quantity: normal(draws, f.record.quantity)[0] for f in passed.records.get(deciding, ())}
+    inputs |= {
+        f.record.quantity: normal(draws, f.record.quantity)[0] for f in passed.records.get(deciding, ())
+    }
     drive = drivers(inputs, found[deciding].end)
     assumed = {key for key, given in givens.items() if given.assumed}
     return assumed_share(drive, assumed), tuple(key for key in drive.shares if key in assumed)[:3]
@@ -307,7 +329,13 @@ def _facts(scenario: Scenario, walked: object, draws: Draws) -> ScenarioFacts:
     if lot.metals_limit is not None:
         limits["metals"] = 1e6 * lot.metals_limit
     return ScenarioFacts(
-        scenario.title, lot.host, lot.mass.median, scenario.risk, tuple(sorted(assumed)), limits, scenario.warnings
+        scenario.title,
+        lot.host,
+        lot.mass.median,
+        scenario.risk,
+        tuple(sorted(assumed)),
+        limits,
+        scenario.warnings,
     )
 
 
@@ -337,11 +365,18 @@ def _routes(
     states = [_route_state(legs, lot) for legs in ends]
     weighed = [_weigh(legs[-1], lot) for legs in ends]
     ranks = standings(
-        states, [w.over for w in weighed], [w.loads for w in weighed], max(draws.blocks, 1)  # type: ignore[arg-type]
+        states,
+        [w.over for w in weighed],
+        [w.loads for w in weighed],
+        max(draws.blocks, 1),  # type: ignore[arg-type]
     )
     results = [
         RouteResult(
-            path, r.chance_over, r.chance_error, None if r.deciding is None else w.names[r.deciding], r.rank,
+            path,
+            r.chance_over,
+            r.chance_error,
+            None if r.deciding is None else w.names[r.deciding],
+            r.rank,
             None if s == "ranked" else s,
         )
         for path, r, w, s in zip(paths, ranks, weighed, states, strict=True)

@@ -111,7 +111,9 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         limit=limit,
         margin=margin(end.high, limit) if known and limit is not None else None,
         worst=None,
-        detection=None if certified is None or certified.detection_limit is None else certified.detection_limit * PPM,
+        detection=None
+        if certified is None or certified.detection_limit is None
+        else certified.detection_limit * PPM,
         spent=spent(start.median, end.median, limit) if known and limit is not None else None,
         word=word(start.median, end.median, limit) if known and limit is not None else None,
         chance_over=None if over is None else over[0],
@@ -119,7 +121,9 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         ceiling=None if best is None else band(np.exp(best) * scale),
         driving_force=None if best is None else _driving_force(passed, i, best),
         held_back_by=_held_back_by(passed, i),
-        shares={name: float(s) for name, s in zip(HELD_BACK_BY, passed.shares[:, i], strict=True) if abs(s) > 1e-3},
+        shares={
+            name: float(s) for name, s in zip(HELD_BACK_BY, passed.shares[:, i], strict=True) if abs(s) > 1e-3
+        },
         contacts=_contact_lines(passed, i, column, scale, ceilings),
         forms=passed.formed.get(element, ()),
         records=tuple(sorted(found.record.quantity for found in records)),
@@ -178,7 +182,11 @@ def _contact_lines(
         own = band(gained)
         ends = ceilings[c]
         rows.append(
-            ContactLine(name, Band(own.low, float(gained[middle]), own.high), None if ends is None else band(np.exp(ends) * scale))
+            ContactLine(
+                name,
+                Band(own.low, float(gained[middle]), own.high),
+                None if ends is None else band(np.exp(ends) * scale),
+            )
         )
     return tuple(rows)
 
@@ -198,7 +206,7 @@ def _series(passed: Passed, element: str, scale: float) -> tuple[tuple[float, Ba
 def group_columns(found: Mapping[str, Column], lot: Lot) -> list[Column]:
     """Return sums with a limit of their own: groups, and all metals together (C N O H S left out)."""
     rows = []
-    sums = {name: members for name, members in lot.groups.items()}
+    sums = dict(lot.groups)
     limits = {name: lot.limits[name] for name in sums if name in lot.limits}
     if lot.metals_limit is not None:
         sums["metals"] = tuple(e for e in lot.certificate if block(e) == "metals")
@@ -220,12 +228,28 @@ def group_line(column: Column, blocks: int) -> Line:
     assert limit is not None
     over = chance(column.end, limit, blocks) if column.certified else (None, None)
     return Line(
-        impurity=column.element, block="metals", start=start if column.certified else None,
-        end=end if column.certified else None, dissolved=None, pickup=band(column.end - column.start), limit=limit,
-        margin=margin(end.high, limit) if column.certified else None, worst=None, detection=None,
+        impurity=column.element,
+        block="metals",
+        start=start if column.certified else None,
+        end=end if column.certified else None,
+        dissolved=None,
+        pickup=band(column.end - column.start),
+        limit=limit,
+        margin=margin(end.high, limit) if column.certified else None,
+        worst=None,
+        detection=None,
         spent=spent(start.median, end.median, limit) if column.certified else None,
         word=word(start.median, end.median, limit) if column.certified else None,
-        chance_over=over[0], chance_error=over[1], ceiling=None, driving_force=None, held_back_by=None, shares={},
-        contacts=(), forms=(), records=(), quality=None, extrapolated=False,
+        chance_over=over[0],
+        chance_error=over[1],
+        ceiling=None,
+        driving_force=None,
+        held_back_by=None,
+        shares={},
+        contacts=(),
+        forms=(),
+        records=(),
+        quality=None,
+        extrapolated=False,
         gap=None if column.certified else "a member of this sum is not certified",
     )

@@ -7,21 +7,21 @@ where the metal ends beyond the saturation of one, the step is redone with that 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.contacts import expose
+from purity.contacts import expose, products
 from purity.contacts.gas import host_evaporation
-from purity.contacts.setting import Exposed, Setting, stoichiometry
+from purity.contacts.setting import Exposed, Setting, diffusivity
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
-from purity.driving_force.substances import ln_dissolution
 from purity.kinetics.advance import HELD_BACK_BY, Host, Pickup, State, advance
-from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, ln_at
 from purity.kinetics.arrhenius import curve_integral
+from purity.kinetics.exposure import Curve, Exposure, Skin
+from purity.kinetics.groups import restrict, tied
 from purity.kinetics.schedule import Schedule, segments
 from purity.scenario import Choice, Lot
 
@@ -33,8 +33,6 @@ KNOTS = 6
 NODES = 16
 #: ln of saturation beyond which a compound is taken to form.
 BEYOND = 1e-6
-#: ln of nominal saturation, at the highest contents of all draws, below which no draw is looked at.
-REACH = 15.0
 #: Most rounds in which compounds that turn out to form are added.
 ROUNDS = 5
 
@@ -107,11 +105,13 @@ def make_setting(
     time = np.stack(np.broadcast_arrays(*(sample(draws, t) for t, _ in choice.profile)))
     T = np.stack(np.broadcast_arrays(*(sample(draws, temperature) for _, temperature in choice.profile)))
     time, T = np.maximum.accumulate(time, axis=0), np.asarray(T)
-    phase = "liquid" if choice.process in ("melt", "cast") else phase_at(library, lot.host, float(np.median(T.max(axis=0))))
+    hottest = float(np.median(T.max(axis=0)))
+    melts = choice.process in ("melt", "cast")
+    phase = "liquid" if melts else phase_at(library, lot.host, hottest)
     if phase == "liquid":
         melting = _melting(library, lot.host)
         T = np.maximum(T, melting)
-    schedule = Schedule(time, T)
+    schedule = Schedule(*(v[:, 0] if v.shape[-1] == 1 else v for v in (time, T)))
     low, high = float(T.min()), float(T.max())
     knots = np.array([low]) if high - low < 0.5 else 1.0 / np.linspace(1.0 / low, 1.0 / high, KNOTS)
     row = library.find("hosts", host=lot.host, phase=phase)
@@ -122,8 +122,17 @@ def make_setting(
     density = density * np.exp(row.record.spread * normal(draws, row.record.quantity)[0])
     mass = sample(draws, lot.mass)
     setting = Setting(
-        library, draws, lot, choice, phase, impurities, molar_mass, knots, time[-1] - time[0],
-        mass / molar_mass[lot.host], density / molar_mass[lot.host],
+        library,
+        draws,
+        lot,
+        choice,
+        phase,
+        impurities,
+        molar_mass,
+        knots,
+        time[-1] - time[0],
+        mass / molar_mass[lot.host],
+        density / molar_mass[lot.host],
     )
     return setting, schedule
 
@@ -172,10 +181,11 @@ def pass_step(
 
 
 def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:
-    """Melting folds surface, films and profile into the bath; on a solid what is brought stays at the surface."""
+    """Melting folds what is at the surface into the bath; on a solid it stays there."""
     n = setting.draws.n
     gains = [one.gain for one in exposed if one.gain is not None]
-    brought = sum((np.broadcast_to(g, (len(setting.impurities), n)) for g in gains), np.zeros((len(setting.impurities), n)))
+    zero = np.zeros((len(setting.impurities), n))
+    brought = sum((np.broadcast_to(g, zero.shape) for g in gains), zero)
     surface = np.zeros_like(brought) if state.surface is None else state.surface
     if setting.liquid:
         return State(state.x + surface + brought, state.suspended)
@@ -186,67 +196,33 @@ def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:
 class _Part:
     """One group of tied elements and what became of it."""
 
-    index: Array
+    index: NDArray[np.int64]
     rows: tuple[int, ...]
     pickup: Pickup
-    skins: tuple[Skin, ...]
+    skins: tuple[tuple[Skin, tuple[Found, ...]], ...]
 
 
 def _move(
     entered: State, setting: Setting, schedule: Schedule, exposed: Sequence[Exposed], history: bool
 ) -> list[_Part]:
     exposures = [one.exposure for one in exposed]
-    watched = _watched(setting)
-    active: list[Skin] = []
+    seen = products.watched(setting)
+    active: dict[str, tuple[Skin, tuple[Found, ...]]] = {}
     parts: list[_Part] = []
+    end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
     for _ in range(ROUNDS):
+        skins = [own for own, _ in active.values()]
         parts = [
-            _advance(entered, setting, schedule, exposures, index, [s for s in active if s.nu[index].any()], history)
-            for index in tied(exposures, active, len(setting.impurities))
+            _advance(entered, setting, schedule, exposures, index, active, history)
+            for index in tied(exposures, skins, len(setting.impurities))
         ]
         x = _collect(entered.x, parts)
-        near = _within_reach(watched, x, {s.name for s in active})
-        beyond = [s for s in (_skin(setting, f) for f in near) if _saturation(s, x, setting, schedule).max() > BEYOND]
+        near = {name: products.skin(setting, name) for name in products.within_reach(seen, x, active)}
+        beyond = {n: s for n, s in near.items() if products.saturation(s[0], x, end).max() > BEYOND}
         if not beyond:
             break
-        active = [*active, *beyond]
+        active |= beyond
     return parts
-
-
-def tied(exposures: Sequence[Exposure], skins: Iterable[Skin], count: int) -> list[Array]:
-    """Group elements that some carrier or skin ties together.
-
-    Parameters
-    ----------
-    exposures : sequence of Exposure
-    skins : iterable of Skin
-    count : int
-        Number of elements.
-
-    Returns
-    -------
-    list of int arrays
-        Indices, each element in one group; groups without any carrier are left out.
-    """
-    parent = list(range(count))
-    touched: set[int] = set()
-
-    def root(i: int) -> int:
-        while parent[i] != i:
-            i = parent[i]
-        return i
-
-    units: list[Carrier | Skin] = [c for e in exposures for c in e.carriers]
-    for unit in [*units, *skins]:
-        members = np.flatnonzero(unit.nu).tolist()
-        touched |= set(members)
-        for other in members[1:]:
-            parent[root(other)] = root(members[0])
-    touched |= {int(i) for e in exposures for film in e.films for i in np.flatnonzero(film.nu)}
-    groups: dict[int, list[int]] = {}
-    for i in sorted(touched):
-        groups.setdefault(root(i), []).append(i)
-    return [np.array(members) for members in groups.values()]
 
 
 def _advance(
@@ -254,8 +230,8 @@ def _advance(
     setting: Setting,
     schedule: Schedule,
     exposures: Sequence[Exposure],
-    index: Array,
-    skins: Sequence[Skin],
+    index: NDArray[np.int64],
+    active: Mapping[str, tuple[Skin, tuple[Found, ...]]],
     history: bool,
 ) -> _Part:
     """Move one group of tied elements."""
@@ -265,12 +241,16 @@ def _advance(
         if part.carriers or part.films:
             rows.append(c)
             sub.append(part)
-    own = tuple(Skin(s.name, s.nu[index], s.ln_k) for s in skins)
+    own = {name: pair for name, pair in active.items() if pair[0].nu[index].any()}
     if own and sub:
-        sub[0] = replace(sub[0], skins=own)
+        skins = tuple(replace(skin, nu=skin.nu[index]) for skin, _ in own.values())
+        sub[0] = replace(sub[0], skins=skins)
     state = State(
-        entered.x[index], entered.suspended[index],
-        None if entered.profile is None else entered.profile[index], entered.film, entered.films,
+        entered.x[index],
+        entered.suspended[index],
+        None if entered.profile is None else entered.profile[index],
+        entered.film,
+        entered.films,
         None if entered.surface is None else entered.surface[index],
     )
     diffusivity = None
@@ -278,22 +258,10 @@ def _advance(
         diffusivity = _diffusivity(setting, index)
     host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
     pickup = advance(state, host, setting.choice.form, schedule, sub, history=history, nodes=NODES)
-    return _Part(index, tuple(rows), pickup, tuple(skins))
+    return _Part(index, tuple(rows), pickup, tuple(own.values()))
 
 
-def restrict(exposure: Exposure, index: Array) -> Exposure:
-    """Return the exposure as some of the elements see it."""
-    exchange = Curve(exposure.exchange.T, exposure.exchange.ln[index])
-    carriers = tuple(
-        replace(carrier, nu=carrier.nu[index]) for carrier in exposure.carriers if carrier.nu[index].any()
-    )
-    films = tuple(replace(film, nu=film.nu[index]) for film in exposure.films if film.nu[index].any())
-    return replace(exposure, exchange=exchange, carriers=carriers, skins=(), films=films)
-
-
-def _diffusivity(setting: Setting, index: Array) -> Curve:
-    from purity.contacts.setting import diffusivity
-
+def _diffusivity(setting: Setting, index: NDArray[np.int64]) -> Curve:
     rows = []
     for i in index:
         found = diffusivity(setting, setting.impurities[int(i)])
@@ -306,50 +274,6 @@ def _collect(x: Array, parts: Sequence[_Part]) -> Array:
     for part in parts:
         after[part.index] = part.pickup.state.x
     return after
-
-
-def _saturation(skin: Skin, x: Array, setting: Setting, schedule: Schedule) -> Array:
-    """ln of the saturation of a compound in the metal as it ends, (N,)."""
-    end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
-    return np.asarray(skin.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(skin.ln_k, end))
-
-
-def _watched(setting: Setting) -> dict[str, tuple[Array, float]]:
-    """Return nu (I,) and the lowest nominal ln K of each compound that could form and is no wall."""
-    if not setting.liquid:
-        return {}
-    walls = {f for c in setting.choice.contacts for f in getattr(c.body, "phases", {})}
-    T = setting.T[:, np.newaxis]
-    watched = {}
-    for formula in _solids(setting.library):
-        nu = stoichiometry(setting, formula)
-        if formula in walls or nu is None or not nu.any():
-            continue
-        energy = ln_dissolution(
-            setting.library, setting.host, setting.phase, formula, "solid", T, Draws.nominal()
-        )
-        if not isinstance(energy, Gap):
-            watched[formula] = (nu, float(energy.value.min()))
-    return watched
-
-
-def _within_reach(watched: Mapping[str, tuple[Array, float]], x: Array, known: set[str]) -> list[str]:
-    """Return the compounds whose saturation the spread of their records could make up for."""
-    highest = np.log(np.maximum(x.max(axis=-1), 1e-30))
-    return [f for f, (nu, ln_k) in watched.items() if f not in known and float(nu @ highest) - ln_k > -REACH]
-
-
-def _skin(setting: Setting, formula: str) -> Skin:
-    energy = ln_dissolution(
-        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:, np.newaxis], setting.draws
-    )
-    nu = stoichiometry(setting, formula)
-    assert not isinstance(energy, Gap) and nu is not None
-    return Skin(formula, nu, Curve(setting.T, energy.value))
-
-
-def _solids(library: Library) -> list[str]:
-    return sorted({r.quantity.split(":")[1].rsplit("/", 2)[0] for r in library.rows("gibbs", state="solid")})
 
 
 def _melting(library: Library, host: str) -> float:
@@ -389,23 +313,35 @@ def _gather(
         shares[:, part.index] = np.median(done.shares, axis=-1)
         attacked |= done.attacked
         flags |= done.flags
-        for skin in part.skins:
+        for skin, _ in part.skins:
             if skin.name in done.formed:
                 for i in np.flatnonzero(skin.nu):
                     formed[setting.impurities[i]] = (*formed.get(setting.impurities[i], ()), skin.name)
         if done.history is not None and done.times is not None:
             for row, i in enumerate(part.index):
                 series[setting.impurities[int(i)]] = (done.times, done.history[row])
-    after = State(
-        x, suspended, None, np.stack(list(film.values())) if film else None, tuple(film), surface
-    )
+    after = State(x, suspended, None, np.stack(list(film.values())) if film else None, tuple(film), surface)
     loss, loss_records = _host_loss(setting, schedule, exposed)
     after, ledger = _enrich(after, ledger, setting, loss)
     return Passed(
-        setting.choice, setting.impurities, tuple(one.exposure.contact for one in exposed), state, after, ledger,
-        setting, exposed, _records(setting, exposed, parts, loss_records), _gaps(exposed), shares, formed, attacked,
-        flags, max((part.pickup.error for part in parts), default=0.0), loss,
-        np.broadcast_to(schedule.T.max(axis=0), (n,)), series,
+        setting.choice,
+        setting.impurities,
+        tuple(one.exposure.contact for one in exposed),
+        state,
+        after,
+        ledger,
+        setting,
+        exposed,
+        _records(setting, exposed, parts, loss_records),
+        _gaps(exposed),
+        shares,
+        formed,
+        attacked,
+        flags,
+        max((part.pickup.error for part in parts), default=0.0),
+        loss,
+        np.broadcast_to(schedule.T.max(axis=0), (n,)),
+        series,
         tuple(dict.fromkeys(note for one in exposed for note in one.notes)),
     )
 
@@ -462,8 +398,8 @@ def _records(
             if touching or one.exposure.films:
                 for member in members:
                     used.extend(one.element_records.get(member, ()))
-        for skin in part.skins:
-            used.extend(_skin_records(setting, skin.name))
+        for _, found in part.skins:
+            used.extend(found)
         for member in members:
             records[member] |= {found.record.quantity: found for found in used}
     for one in exposed:
@@ -473,13 +409,6 @@ def _records(
             if element in records:
                 records[element] |= {f.record.quantity: f for f in found}
     return {element: tuple(found.values()) for element, found in records.items()}
-
-
-def _skin_records(setting: Setting, formula: str) -> tuple[Found, ...]:
-    energy = ln_dissolution(
-        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:1, np.newaxis], Draws.nominal()
-    )
-    return () if isinstance(energy, Gap) else energy.found
 
 
 def _gaps(exposed: Sequence[Exposed]) -> dict[str, tuple[Gap, ...]]:

@@ -95,7 +95,9 @@ def _brought(
     inputs: tuple[Given, ...],
 ) -> Exposed:
     zero = np.zeros(np.broadcast_shapes(setting.amount.shape, *(a.shape for a in amounts.values())))
-    gain = np.stack([np.broadcast_to(amounts.get(e, zero), zero.shape) / setting.amount for e in setting.impurities])
+    gain = np.stack(
+        [np.broadcast_to(amounts.get(e, zero), zero.shape) / setting.amount for e in setting.impurities]
+    )
     rate, _ = exchange(setting, "free surface") if not setting.liquid else (_none(setting), {})
     exposure = Exposure(contact.name, setting.sample(contact.area), rate, ())
     return Exposed(exposure, gain, {}, records, inputs)
@@ -117,7 +119,7 @@ def _surface_rows(setting: Setting, surface: str) -> list[Found]:
 
 
 def _elements(setting: Setting, species: str, mass: Array) -> dict[str, Array]:
-    """mol of each impurity in a mass (kg) of a species."""
+    """Mol of each impurity in a mass (kg) of a species."""
     counts = atoms(species)
     molar = sum(setting.molar_mass[element] * count for element, count in counts.items())
     return {

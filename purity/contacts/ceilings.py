@@ -42,13 +42,14 @@ def ceiling(exposed: Exposed, setting: Setting, x: Array, T: Array, element: int
     giving = [c for c in mine if _gives(c)]
     if not giving:
         return None
-    ends = [_saturation(c, ln_x, T, element) for c in giving if c.conductance is None and c.inventory is None]
-    stores = [_store(c, setting, ln_x, x, T, element) for c in giving if c.conductance is None and c.inventory is not None]
+    held = [c for c in giving if c.conductance is None]
+    ends = [_saturation(c, ln_x, T, element) for c in held if c.inventory is None]
+    ends += [_store(c, setting, ln_x, x, T, element) for c in held if c.inventory is not None]
     open_side = [c for c in mine if c.conductance is not None]
     if any(_gives(c) for c in open_side):
         ends.append(_balance(open_side, ln_x, T, element))
     n = x.shape[-1]
-    return np.asarray(np.max(np.stack([np.broadcast_to(e, (n,)) for e in (*ends, *stores)]), axis=0))
+    return np.asarray(np.max(np.stack([np.broadcast_to(e, (n,)) for e in ends]), axis=0))
 
 
 def _gives(carrier: Carrier) -> bool:
@@ -64,7 +65,7 @@ def _activity(carrier: Carrier, T: Array) -> Array:
 
 
 def _rest(carrier: Carrier, ln_x: Array, T: Array, element: int) -> Array:
-    """ln of a_s without the element's own part."""
+    """Ln of a_s without the element's own part."""
     others = carrier.nu.copy()
     others[element] = 0.0
     return np.asarray(others @ ln_x - ln_at(carrier.ln_k, T))
@@ -78,7 +79,7 @@ def _saturation(carrier: Carrier, ln_x: Array, T: Array, element: int) -> Array:
 def _store(carrier: Carrier, setting: Setting, ln_x: Array, x: Array, T: Array, element: int) -> Array:
     assert carrier.inventory is not None
     whole = x[element] + carrier.nu[element] * carrier.inventory / setting.amount
-    return np.minimum(_saturation(carrier, ln_x, T, element), np.log(np.maximum(whole, 1e-30)))
+    return np.asarray(np.minimum(_saturation(carrier, ln_x, T, element), np.log(np.maximum(whole, 1e-30))))
 
 
 def _balance(carriers: list[Carrier], ln_x: Array, T: Array, element: int) -> Array:

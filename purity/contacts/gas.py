@@ -101,8 +101,13 @@ def gas(contact: Contact, setting: Setting) -> Exposed:
     for name in gases(setting):
         conductance, found = gas_conductance(setting, name, load)
         made = carrier(
-            setting, name, "gas", activity=load.activity.get(name, np.zeros(1)), conductance=conductance,
-            inventory=load.inventory.get(name), limit="supply" if load.inventory else "gas film",
+            setting,
+            name,
+            "gas",
+            activity=load.activity.get(name, np.zeros(1)),
+            conductance=conductance,
+            inventory=load.inventory.get(name),
+            limit="supply" if load.inventory else "gas film",
         )
         if isinstance(made, Gap):
             if name in load.activity:
@@ -111,9 +116,9 @@ def gas(contact: Contact, setting: Setting) -> Exposed:
             continue
         carriers.append(made[0])
         records[name] = (*made[1], *found, *load.records)
-    for made, found in _evaporation(setting, load):
-        carriers.append(made)
-        records[made.name] = found
+    for leaving, behind in _evaporation(setting, load):
+        carriers.append(leaving)
+        records[leaving.name] = behind
     rate, element_records = exchange(setting, "free surface")
     exposure = Exposure(contact.name, area, rate, tuple(carriers))
     inputs = (contact.area, *load.inputs)
@@ -126,9 +131,7 @@ def gases(setting: Setting) -> tuple[str, ...]:
     return tuple(
         name
         for name in sorted(names)
-        if sum(atoms(name).values()) > 1
-        and (nu := stoichiometry(setting, name)) is not None
-        and nu.any()
+        if sum(atoms(name).values()) > 1 and (nu := stoichiometry(setting, name)) is not None and nu.any()
     )
 
 
@@ -166,7 +169,9 @@ def gas_load(atmosphere: Atmosphere, setting: Setting, area: Array) -> Load:
             return Load(activity, None, {}, pressure, (), inputs, (), (), _main(fractions))
 
 
-def _sources(setting: Setting, furnace: Furnace) -> tuple[dict[str, Array], tuple[Found, ...], tuple[Given, ...]]:
+def _sources(
+    setting: Setting, furnace: Furnace
+) -> tuple[dict[str, Array], tuple[Found, ...], tuple[Given, ...]]:
     """Return gas that enters a vessel besides its feed, Pa m3/s by species, with records and inputs."""
     entering: dict[str, Array] = {}
     records: tuple[Found, ...] = ()
@@ -215,8 +220,16 @@ def _flowing(
         measured = {name: setting.sample(given) * pressure / P0 for name, given in furnace.exhaust.items()}
         activity = {**activity, **measured}
         return Load(
-            activity, supply, {}, pressure, records, (*inputs, *furnace.exhaust.values()), notes, tuple(measured),
-            _main(fractions), True,
+            activity,
+            supply,
+            {},
+            pressure,
+            records,
+            (*inputs, *furnace.exhaust.values()),
+            notes,
+            tuple(measured),
+            _main(fractions),
+            True,
         )
     if not entering:
         notes = ("line and furnace assumed perfect: no leak, outgassing or exhaust given",)
@@ -285,7 +298,9 @@ def gas_conductance(setting: Setting, name: str, load: Load) -> tuple[Curve, tup
 
 
 def _film(setting: Setting, load: Load) -> Found | None:
-    found = setting.library.find("transfer", place="gas film", stirring="flowing" if load.flowing else "still")
+    found = setting.library.find(
+        "transfer", place="gas film", stirring="flowing" if load.flowing else "still"
+    )
     return found if isinstance(found, Found) else None
 
 
@@ -327,8 +342,13 @@ def _evaporation(setting: Setting, load: Load) -> list[tuple[Carrier, tuple[Foun
     for element in setting.impurities:
         conductance, found = gas_conductance(setting, element, load)
         made = carrier(
-            setting, element, "gas", name=f"evaporation of {element}", activity=np.zeros(1),
-            conductance=conductance, limit="gas film",
+            setting,
+            element,
+            "gas",
+            name=f"evaporation of {element}",
+            activity=np.zeros(1),
+            conductance=conductance,
+            limit="gas film",
         )
         if not isinstance(made, Gap):
             rows.append((made[0], (*made[1], *found)))

@@ -76,7 +76,7 @@ def package(contact: Contact, setting: Setting) -> Exposed:
         supply[gas] = filled * volume / (R * T) + one.let_in - one.taken
     if gaps:
         made = stored(contact, setting, "indoor air", np.ones(1), {}, ())
-        by_element = {e: tuple(gaps) for g in gaps for e in set(atoms(g.quantity.rsplit("/", 1)[-1])) & {"H", "O"}}
+        by_element = dict.fromkeys(("H", "O"), tuple(gaps))
         return Exposed(made.exposure, made.gain, {}, made.element_records, (), by_element, ())
     humidity = relative_humidity(setting, inside["H2O"].pressure)
     oxygen = float(np.median(partial_pressure(body.outside, "O2", setting)) / 101325.0)
@@ -96,10 +96,11 @@ def wall_conductance(body: Package, gas: str, setting: Setting) -> tuple[Array, 
     if isinstance(found, Gap):
         return found
     fields = found.record.fields
-    per_area = fields.get("permeance_mol_per_m2_s_Pa")
-    if per_area is None:
-        if body.thickness is None:
-            return Gap(found.record.quantity, "a film needs its thickness")
+    if "permeance_mol_per_m2_s_Pa" in fields:
+        per_area = np.array([fields["permeance_mol_per_m2_s_Pa"]])
+    elif body.thickness is None:
+        return Gap(found.record.quantity, "a film needs its thickness")
+    else:
         per_area = fields["permeability_mol_per_m_s_Pa"] / setting.sample(body.thickness)
     return np.asarray(per_area * setting.sample(body.area) * spread_factor(setting, found.record)), found
 
@@ -119,13 +120,22 @@ def desiccant(body: Package, gas: str, setting: Setting) -> tuple[Array, Array, 
     if isinstance(found, Gap):
         return none, none, ()
     fields = found.record.fields
-    mass = setting.sample(body.desiccant) * fields["capacity_kg_per_kg"] * spread_factor(setting, found.record)
+    mass = (
+        setting.sample(body.desiccant) * fields["capacity_kg_per_kg"] * spread_factor(setting, found.record)
+    )
     molar = sum(setting.molar_mass[element] * count for element, count in atoms("H2O").items())
     return mass / molar, np.array([fields["floor_Pa"]]), (found,)
 
 
 def let_in(
-    conductance: Array, outside: Array, filled: Array, volume: Array, time: Array, T: float, capacity: Array, floor: Array
+    conductance: Array,
+    outside: Array,
+    filled: Array,
+    volume: Array,
+    time: Array,
+    T: float,
+    capacity: Array,
+    floor: Array,
 ) -> Inside:
     """Return what comes through a wall in a time.
 

@@ -176,7 +176,7 @@ def carrier_of(setting: Setting, gas: str, mol: Array) -> Carrier:
 
 
 def diffusivity(setting: Setting, element: str) -> tuple[Array, Found] | Gap:
-    """Return ln D (m2/s) at the knots, (K, N): the pair's own record, else the class estimate of its phase."""
+    """Return ln D (m2/s) at the knots, (K, N): of the pair, else the estimate for its phase."""
     library = setting.library
     found = library.find("diffusion", host=setting.host, phase=setting.phase, solute=element)
     if isinstance(found, Gap):
@@ -214,7 +214,9 @@ def series(*conductances: Array | None) -> Array:
     return np.asarray(1.0 / reduce(np.add, parts))
 
 
-def exchange(setting: Setting, place: str, factor: Array | None = None) -> tuple[Curve, dict[str, tuple[Found, ...]]]:
+def exchange(
+    setting: Setting, place: str, factor: Array | None = None
+) -> tuple[Curve, dict[str, tuple[Found, ...]]]:
     """Return the metal-side exchange of every impurity at a wall or free surface.
 
     A melt takes k = k_ref (D/D_ref)^m of its place and stirring, with one factor of stirring for the
@@ -244,7 +246,8 @@ def exchange(setting: Setting, place: str, factor: Array | None = None) -> tuple
     record = found.record
     z = normal(setting.draws, f"stirring:{stirring}")[0]
     ln_ref = np.log(record.fields["k_m_per_s"]) + record.spread * z
-    rows, records = [], {}
+    rows: list[Array] = []
+    records: dict[str, tuple[Found, ...]] = {}
     for element in setting.impurities:
         diffusion = diffusivity(setting, element)
         if isinstance(diffusion, Gap):

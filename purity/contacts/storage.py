@@ -126,7 +126,7 @@ def relative_humidity(setting: Setting, water: Array) -> Array:
     if isinstance(liquid, Gap) or isinstance(gas, Gap):
         raise LookupError("the Gibbs table has no water")
     saturated = float(P0 * np.exp((liquid.value - gas.value) / (R * T)).ravel()[0])
-    return np.minimum(1.0, water / saturated)
+    return np.asarray(np.minimum(1.0, water / saturated))
 
 
 def _like(environment: str) -> tuple[str, ...]:
@@ -187,6 +187,9 @@ def _adsorbed(
         mol = np.minimum(mol, most)
     counts = atoms("H2O")
     gain = np.stack(
-        [np.broadcast_to(mol * counts.get(e, 0.0) / setting.amount, (setting.draws.n,)) for e in setting.impurities]
+        [
+            np.broadcast_to(mol * counts.get(e, 0.0) / setting.amount, (setting.draws.n,))
+            for e in setting.impurities
+        ]
     )
     return gain, (found,)

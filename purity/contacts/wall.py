@@ -59,7 +59,9 @@ def wall(contact: Contact, setting: Setting) -> Exposed:
     gaps: dict[str, tuple[Gap, ...]] = {}
     inputs: list[Given] = [contact.area]
 
-    def add(made: tuple[Carrier, tuple[Found, ...]] | Gap, formula: str, extra: tuple[Found, ...] = ()) -> None:
+    def add(
+        made: tuple[Carrier, tuple[Found, ...]] | Gap, formula: str, extra: tuple[Found, ...] = ()
+    ) -> None:
         if isinstance(made, Gap):
             for element in set(atoms(formula)) - {setting.host}:
                 gaps[element] = (*gaps.get(element, ()), made)
@@ -73,14 +75,25 @@ def wall(contact: Contact, setting: Setting) -> Exposed:
         pressure = _co_pressure(contact, setting)
         inputs.append(pressure)
         made = carrier(
-            setting, "CO", "gas", name=f"CO at {contact.name}", activity=setting.sample(pressure) / P0,
-            conductance=flat(setting, OPEN), inventory=np.zeros(1), limit="gas film",
+            setting,
+            "CO",
+            "gas",
+            name=f"CO at {contact.name}",
+            activity=setting.sample(pressure) / P0,
+            conductance=flat(setting, OPEN),
+            inventory=np.zeros(1),
+            limit="gas film",
         )
         add(made, "CO")
     for formula, activity, inventory, found, used in _traces(contact, material, setting, area):
         inputs.extend(used)
         made = carrier(
-            setting, formula, "solid", name=f"{formula} in {contact.name}", activity=activity, inventory=inventory,
+            setting,
+            formula,
+            "solid",
+            name=f"{formula} in {contact.name}",
+            activity=activity,
+            inventory=inventory,
             limit="inventory",
         )
         add(made, formula, found)
@@ -129,7 +142,9 @@ def _co_pressure(contact: Contact, setting: Setting) -> Given:
     gas = next((c.body for c in setting.choice.contacts if c.role == "gas"), None)
     above = float(getattr(getattr(gas, "pressure", None), "median", 0.0))
     low, high = CO_VENTED
-    return Given(f"{contact.area.key}/CO pressure", "lognormal", max(low, 0.002 * above), max(high, above), True)
+    return Given(
+        f"{contact.area.key}/CO pressure", "lognormal", max(low, 0.002 * above), max(high, above), True
+    )
 
 
 def _traces(
@@ -143,7 +158,7 @@ def _traces(
     total = np.sum(np.stack(np.broadcast_arrays(*moles.values())), axis=0)
     depth, depth_found = _wall_value(setting, material, "leach_depth", material.leach_depth)
     density, density_found = _wall_value(setting, material, "density", None)
-    rows = []
+    rows: list[tuple[str, Array, Array, tuple[Found, ...], tuple[Given, ...]]] = []
     for formula, given in material.traces.items():
         if stoichiometry(setting, formula) is None or set(atoms(formula)) == {setting.host}:
             continue

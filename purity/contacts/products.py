@@ -1,0 +1,70 @@
+"""Compounds that can form in a melt although no wall is made of them, and the skins they make."""
+
+from __future__ import annotations
+
+from collections.abc import Collection, Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.contacts.setting import Setting, stoichiometry
+from purity.database import Found, Gap
+from purity.draws import Draws
+from purity.driving_force.substances import Energy, ln_dissolution
+from purity.kinetics.exposure import Curve, Skin, ln_at
+
+Array = NDArray[np.float64]
+
+#: ln of nominal saturation, at the highest contents of all draws, below which no draw is looked at.
+REACH = 15.0
+
+
+def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
+    """Return nu (I,) and the lowest nominal ln K of each compound that could form and is no wall."""
+    if not setting.liquid:
+        return {}
+    walls = {formula for c in setting.choice.contacts for formula in getattr(c.body, "phases", {})}
+    seen: dict[str, tuple[Array, float]] = {}
+    for formula in setting.library.names("gibbs", "formula"):
+        nu = stoichiometry(setting, formula)
+        if formula in walls or nu is None or not nu.any():
+            continue
+        energy = _dissolution(setting, formula, Draws.nominal())
+        if not isinstance(energy, Gap):
+            seen[formula] = (nu, float(energy.value.min()))
+    return seen
+
+
+def within_reach(seen: Mapping[str, tuple[Array, float]], x: Array, known: Collection[str]) -> list[str]:
+    """Return the compounds whose saturation the spread of their records could make up for.
+
+    Parameters
+    ----------
+    seen : mapping
+        From :func:`watched`.
+    x : (I, N) array
+        Dissolved contents.
+    known : collection of str
+        Compounds that are followed already.
+    """
+    highest = np.log(np.maximum(x.max(axis=-1), 1e-30))
+    return [f for f, (nu, ln_k) in seen.items() if f not in known and float(nu @ highest) - ln_k > -REACH]
+
+
+def skin(setting: Setting, formula: str) -> tuple[Skin, tuple[Found, ...]]:
+    """Return the skin of a compound, draw by draw, and its records."""
+    energy, nu = _dissolution(setting, formula, setting.draws), stoichiometry(setting, formula)
+    if isinstance(energy, Gap) or nu is None:
+        raise LookupError(f"no Gibbs energy of {formula} in {setting.host}")
+    return Skin(formula, nu, Curve(setting.T, energy.value)), energy.found
+
+
+def saturation(skin: Skin, x: Array, T: Array) -> Array:
+    """Return ln of the saturation of a compound, (N,), at contents (I, N) and temperatures (N,)."""
+    return np.asarray(skin.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(skin.ln_k, T))
+
+
+def _dissolution(setting: Setting, formula: str, draws: Draws) -> Energy | Gap:
+    return ln_dissolution(
+        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:, np.newaxis], draws
+    )
