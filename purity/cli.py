@@ -403,14 +403,14 @@ def coverage(
 
 
 def _by_element(covers: Iterable[Cover]) -> tuple[list[str], list[list[str]]]:
-    """Titles and rows: elements down, properties across; elements without any record are left out."""
-    cells: dict[str, dict[str, str]] = {}
+    """Titles and rows: element and phase down, properties across; rows without any record are left out."""
+    cells: dict[tuple[str, str], dict[str, str]] = {}
     for cover in covers:
-        cells.setdefault(cover.element, {})[f"{cover.table} {cover.phase}"] = cover.quality or "-"
+        cells.setdefault((cover.element, cover.phase), {})[cover.table] = cover.quality or "-"
     titles = list(dict.fromkeys(title for row in cells.values() for title in row))
     rows = [
-        [name, *(row.get(title, "-") for title in titles), ""]
-        for name, row in cells.items()
+        [*place, *(row.get(title, "-") for title in titles), ""]
+        for place, row in cells.items()
         if set(row.values()) != {"-"}
     ]
-    return ["element", *titles, ""], rows
+    return ["element", "phase", *titles, ""], rows

@@ -27,8 +27,8 @@ def as_csv(result: Result) -> str:
 def table_csv(rows: Sequence[Mapping[str, Any]]) -> str:
     """Return rows of equal keys as CSV with a header line.
 
-    Numbers are written in full, unknown is an empty cell, and words that a spreadsheet could take for a
-    formula get a leading apostrophe.
+    Numbers are written in full, unknown is an empty cell, line breaks in words become blanks, and words
+    that a spreadsheet could take for a formula get a leading apostrophe.
     """
     out = StringIO()
     writer = csv.writer(out, lineterminator="\n")
@@ -41,6 +41,7 @@ def table_csv(rows: Sequence[Mapping[str, Any]]) -> str:
 def _cell(value: object) -> object:
     if value is None:
         return ""
-    if isinstance(value, str) and value.startswith(FORMULA_STARTS):
-        return f"'{value}"
-    return value
+    if not isinstance(value, str):
+        return value
+    line = " ".join(value.split()) if any(mark < " " for mark in value) else value
+    return f"'{line}" if line.startswith(FORMULA_STARTS) else line

@@ -207,7 +207,7 @@ def _elements(choice: ChoiceResult, width: int, detail: bool) -> Iterator[Render
 
 
 def worst_first(lines: Iterable[Line]) -> list[Line]:
-    """Order lines: limits that nothing can be said of, then by chance over and spent; last what has no limit."""
+    """Order lines: limits of which nothing is known, then by chance over and spent; without a limit last."""
 
     def place(line: Line) -> tuple[bool, bool, float, float, str]:
         used = line.spent if line.spent is not None else 1e9 * (line.word == "closed")
