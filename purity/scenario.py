@@ -6,10 +6,12 @@ here reads a file, looks up a table or computes physics.
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields, is_dataclass
+from hashlib import blake2b
 from math import sqrt
-from typing import Literal
+from typing import Any, Literal
 
 Law = Literal["exact", "normal", "lognormal", "uniform", "below"]
 Process = Literal["melt", "cast", "heat", "clean", "touch", "store"]
@@ -357,3 +359,36 @@ class Scenario:
     prefer: tuple[str, ...] = ()
     exclude: tuple[str, ...] = ()
     warnings: tuple[str, ...] = ()
+
+
+#: Fields that say where a value was read or what was said about it, not what it is.
+_TOLD = frozenset({"origin", "notes", "warnings"})
+
+
+def resolved(thing: object) -> Any:
+    """Return plain values (mappings, lists, text, numbers) of a scenario or of a part of it.
+
+    Where a value was read and what was noted about it are left out, so that two files that say the
+    same resolve to the same.
+
+    Raises
+    ------
+    TypeError
+        For something that is no part of a scenario.
+    """
+    if is_dataclass(thing) and not isinstance(thing, type):
+        named = {f.name: resolved(getattr(thing, f.name)) for f in fields(thing) if f.name not in _TOLD}
+        return {"kind": type(thing).__name__, **named}
+    if isinstance(thing, Mapping):
+        return {str(key): resolved(value) for key, value in thing.items()}
+    if isinstance(thing, (tuple, list)):
+        return [resolved(value) for value in thing]
+    if thing is None or isinstance(thing, (str, bool, int, float)):
+        return thing
+    raise TypeError(f"{type(thing).__name__} is no part of a scenario")
+
+
+def scenario_hash(scenario: Scenario) -> str:
+    """blake2b (128 bit) of the canonical JSON of the resolved scenario: sorted keys, shortest numbers."""
+    text = json.dumps(resolved(scenario), sort_keys=True, separators=(",", ":"), allow_nan=False)
+    return blake2b(text.encode(), digest_size=16).hexdigest()

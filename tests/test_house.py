@@ -25,6 +25,8 @@ BELOW_ASSESS = (
     | {"kinetics.*", "quantities", "result", "uncertainty", "risk", "cautions"}
 )
 
+SCENARIO_FILE = NUMBERS | {"scenario", "database", "quantities", "scenario_lines"}
+
 #: room -> rooms of ours it may import. A name with ".*" stands for every room inside.
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
@@ -90,30 +92,15 @@ ALLOWED: dict[str, set[str]] = {
     "new": BELOW_ASSESS | {"assess"},
     "scenario_lines": {"errors"},
     "scenario_schema": NUMBERS | {"scenario", "quantities", "scenario_lines"},
-    "scenario_names": NUMBERS
-    | {"scenario", "database", "composition", "quantities", "scenario_lines", "scenario_schema"},
-    "scenario_forms": NUMBERS | {"scenario", "database", "scenario_lines", "scenario_schema", "scenario_names"},
-    "scenario_contacts": NUMBERS
-    | {
-        "scenario",
-        "database",
-        "quantities",
-        "scenario_lines",
-        "scenario_schema",
-        "scenario_names",
-        "scenario_forms",
-    },
-    "scenario_file": NUMBERS
-    | {
-        "scenario",
-        "database",
-        "quantities",
-        "scenario_lines",
-        "scenario_schema",
-        "scenario_names",
-        "scenario_forms",
-        "scenario_contacts",
-    },
+    "scenario_names": SCENARIO_FILE | {"composition", "scenario_schema"},
+    "scenario_forms": SCENARIO_FILE | {"scenario_schema", "scenario_names"},
+    "scenario_keys": SCENARIO_FILE | {"scenario_schema", "scenario_names"},
+    "scenario_gases": SCENARIO_FILE
+    | {"scenario_schema", "scenario_names", "scenario_forms", "scenario_keys"},
+    "scenario_contacts": SCENARIO_FILE | {"scenario_schema", "scenario_names", "scenario_keys"},
+    "scenario_choices": SCENARIO_FILE
+    | {f"scenario_{n}" for n in ("schema", "names", "forms", "keys", "gases", "contacts")},
+    "scenario_file": SCENARIO_FILE | {f"scenario_{n}" for n in ("schema", "names", "forms", "choices")},
     "report.*": {"result", "report.*"},
     "report": {"result", "report.*"},
 }
