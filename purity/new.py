@@ -17,10 +17,29 @@ risk = 0.05                  # accepted chance of passing any limit
 [lot]
 host = "Cu"
 mass = "25 kg"
-# As certified. A method and its detection limit may stand with the value.
-certificate = { Ag = 1.2, Fe = 0.30, Ni = 0.10, S = 0.8, H = 0.1, C = 1.0, Si = "<0.05", Al = "<0.05", O = { value = 2.0, method = "inert gas fusion", detection = 0.5 } }
-# The most that the lot may contain; "metals" is the sum without C N O H S, "Fe+Ni" a sum of your own.
-limits = { Fe = 1.0, Ni = 1.0, Si = 0.5, Al = 0.5, S = 2.0, O = 5.0, H = 0.5, C = 5.0, metals = 10.0, "Fe+Ni" = 1.5 }
+
+[lot.certificate]            # ppm by mass; a method and its detection limit may stand with the value
+Ag = 1.2
+Fe = 0.30
+Ni = 0.10
+Si = "<0.05"
+Al = "<0.05"
+C = 1.0
+H = 0.1
+S = 0.8
+O = { value = 2.0, method = "inert gas fusion", detection = 0.5 }
+
+[lot.limits]                 # the most that the lot may contain
+Fe = 1.0
+Ni = 1.0
+Si = 0.5
+Al = 0.5
+C = 5.0
+H = 0.5
+S = 2.0
+O = 5.0
+"Fe+Ni" = 1.5                # a sum of your own
+metals = 10.0                # the sum of all but C N O H S
 
 [lot.charge]                 # the pieces that go into the furnace, with what their surface carries
 form = { shape = "slab", thickness = "25 mm", width = "100 mm", length = "200 mm" }
@@ -46,8 +65,8 @@ free_surface = "175 cm2"     # open to the gas
 stirring = "induction"       # quiescent | induction | bubbled
 immersed = []                # everything else that touches the melt; [] says none
 
-# A choice may set any key of its step. Names come from the tables (purity data) or are described in line:
-#   container = { name = "our alumina", phases = { Al2O3 = 0.997 }, traces = { SiO2 = "1000 ppm" }, leach_depth = "20 um x/ 3" }
+# A choice may set any key of its step. A name comes from the tables (purity data), or stands for a
+# description: container = { name = "our alumina", phases = { Al2O3 = 0.997 }, traces = { SiO2 = "1000 ppm" } }
 [[step.choice]]
 name = "graphite under argon"
 container = "isostatic graphite, purified"
