@@ -31,22 +31,28 @@ class Layout:
         Phase of each species; a gas at fixed volume comes last and has number P.
     families : tuple of tuples of int
         Pure phases of proportional composition, of which one at most is stable.
+    pure : tuple of two integer arrays
+        Phases of one species, and that species.
+    low, high : integer arrays
+        Lower triangle of a C x C matrix.
+    pairs : (C (C + 1) / 2, S) array
+        Products of the atoms of each pair of elements.
+    closed : int
+        Number of species outside the gas at fixed volume.
+    mixed : tuple of (int, int, int)
+        Phases of several species: number, first and last + 1 species.
     """
 
     a: Array
     edges: tuple[tuple[int, int], ...]
     phase: NDArray[np.intp]
     families: tuple[tuple[int, ...], ...]
-
-    @property
-    def closed(self) -> int:
-        """Number of species outside the gas at fixed volume."""
-        return self.edges[-1][1] if self.edges else 0
-
-    @property
-    def mixed(self) -> tuple[tuple[int, int, int], ...]:
-        """Phases of several species: number, first and last + 1 species."""
-        return tuple((p, i, j) for p, (i, j) in enumerate(self.edges) if j - i > 1)
+    pure: tuple[NDArray[np.intp], NDArray[np.intp]]
+    low: NDArray[np.intp]
+    high: NDArray[np.intp]
+    pairs: Array
+    closed: int
+    mixed: tuple[tuple[int, int, int], ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -222,22 +228,33 @@ def layout(formula: Rows, phase: tuple[int, ...], fixed_volume: bool) -> tuple[L
             atoms = sum(rows[i])
             groups.setdefault(tuple(Fraction(v, atoms) for v in rows[i]), []).append(p)
     families = tuple(tuple(g) for g in groups.values() if len(g) > 1)
-    return Layout(np.array(rows, dtype=float), edges, numbers, families), columns, rows
+    low, high = np.tril_indices(len(columns))
+    a = np.array(rows, dtype=float)
+    alone = [(p, i) for p, (i, j) in enumerate(edges) if j - i == 1]
+    pure = (np.array([p for p, _ in alone], dtype=np.intp), np.array([i for _, i in alone], dtype=np.intp))
+    pairs = np.ascontiguousarray((a[:, low] * a[:, high]).T)
+    closed = edges[-1][1] if edges else 0
+    mixed = tuple((p, i, j) for p, (i, j) in enumerate(edges) if j - i > 1)
+    made = Layout(a, edges, numbers, families, pure, low, high, pairs, closed, mixed)
+    return made, columns, rows
 
 
-def check_span(formula: Rows, inputs: Rows, names: Sequence[str], elements: Sequence[str]) -> list[int]:
+@lru_cache(maxsize=256)
+def check_span(
+    formula: Rows, inputs: Rows, names: tuple[str, ...], elements: tuple[str, ...]
+) -> tuple[int, ...]:
     """Find inputs whose composition no combination of species can have.
 
     Parameters
     ----------
     formula, inputs : rows
-    names : sequence of str
+    names : tuple of str
         Of the inputs.
-    elements : sequence of str
+    elements : tuple of str
 
     Returns
     -------
-    list of int
+    tuple of int
         Inputs outside the span of the species.
 
     Raises
@@ -253,7 +270,7 @@ def check_span(formula: Rows, inputs: Rows, names: Sequence[str], elements: Sequ
                     f"add a solute, a gas or a compound of {elements[e]}."
                 )
     rank = len(independent(formula))
-    return [j for j, row in enumerate(inputs) if len(independent([*formula, row])) > rank]
+    return tuple(j for j, row in enumerate(inputs) if len(independent([*formula, row])) > rank)
 
 
 def forced_zero(a: Array, total: Array) -> list[int] | None:
@@ -285,12 +302,12 @@ def forced_zero(a: Array, total: Array) -> list[int] | None:
     best = linprog(cost, A_eq=together, b_eq=ones, bounds=[*bound, (0.0, 1.0)], method="highs")
     if best.status == 2:
         return None
-    if best.status == 0 and -best.fun > 1e-9:
+    if best.x is not None and best.x[-1] > 1e-9:
         return []
     zero: list[int] = []
     for i, index in enumerate(np.flatnonzero(free)):
         one: Array = -np.eye(size)[i]
         single = linprog(one, A_eq=scaled, b_eq=ones, bounds=bound, method="highs")
-        if single.status == 0 and -single.fun < 1e-9:
+        if single.x is not None and single.x[i] < 1e-9:
             zero.append(int(index))
     return zero

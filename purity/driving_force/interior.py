@@ -57,6 +57,10 @@ CHAIN = (
 
 _FLOOR = 1e-280
 _T_FLOOR = 0.03
+#: What a trial step reads.
+_NEEDED = ("g", "target", "off", "volume", "mu", "weight", "lam", "size", "slack", "merit")
+#: Draws below which one call to LAPACK is faster than elimination over the draw axis.
+_FEW = 64
 
 
 def mix(layout: Layout, u: Array) -> tuple[Array, Array]:
@@ -75,10 +79,8 @@ def mix(layout: Layout, u: Array) -> tuple[Array, Array]:
     """
     total: Array = np.empty((len(layout.edges), u.shape[1]))
     x: Array = np.ones_like(u)
-    for p, (i, j) in enumerate(layout.edges):
-        if j - i == 1:
-            total[p] = u[i]
-            continue
+    total[layout.pure[0]] = u[layout.pure[1]]
+    for p, i, j in layout.mixed:
         top = u[i:j].max(axis=0)
         share = np.exp(u[i:j] - top)
         whole = share.sum(axis=0)
@@ -103,10 +105,10 @@ def _evaluate(layout: Layout, d: Draws, lam: Array, size: Array, slack: Array) -
 
 def _centre(point: Draws, d: Draws) -> Draws:
     t: Array = point["size"] * point["slack"] / (d["mu"] * d["weight"])
-    point["t"] = t
-    e2: Array = np.where(t <= 1.0, np.log(np.minimum(t, 1.0)), t - 1.0)
-    sums = [(point[k] ** 2).sum(axis=0) for k in ("e1", "e3")]
-    point["merit"] = sums[0] + sums[1] + (e2**2).sum(axis=0)
+    # Logarithm of t below 1, linear above: Newton's method stays quick from either side.
+    point["t"], point["below"], point["above"] = t, np.log(np.minimum(t, 1.0)), np.maximum(t, 1.0)
+    off = (point["e1"], point["e3"], point["below"] + (point["above"] - 1.0))
+    point["merit"] = sum((np.einsum("in,in->n", e, e) for e in off), np.zeros(t.shape[1]))
     return point
 
 
@@ -116,7 +118,7 @@ def solve_spd(k: Array, r: Array) -> Array:
     Parameters
     ----------
     k : (C, C, N) array
-        Lower triangle used, overwritten.
+        Symmetric, overwritten.
     r : (C, N) array
 
     Returns
@@ -124,6 +126,9 @@ def solve_spd(k: Array, r: Array) -> Array:
     (C, N) array
     """
     size = len(r)
+    if r.shape[1] < _FEW:
+        few = np.linalg.solve(k.transpose(2, 0, 1), r.T[:, :, None])
+        return np.asarray(few[:, :, 0].T, dtype=np.float64)
     y: Array = r.copy()
     for j in range(size):
         for m in range(j):
@@ -140,20 +145,18 @@ def solve_spd(k: Array, r: Array) -> Array:
 
 
 def _matrix(layout: Layout, d: Draws) -> Array:
-    a = layout.a
     ratio: Array = d["size"] / d["slack"]
     weight: Array = d["n"].copy()
-    single = np.array([j - i == 1 for i, j in layout.edges], dtype=bool)
-    first = np.array([i for i, _ in layout.edges], dtype=np.intp)
-    weight[first[single]] = ratio[single]
-    c = a.shape[1]
-    low, high = np.tril_indices(c)
-    flat: Array = (a[:, low] * a[:, high]).T @ weight
+    phases, alone = layout.pure
+    weight[alone] = ratio[phases]
+    low, high, c = layout.low, layout.high, layout.a.shape[1]
+    flat: Array = layout.pairs @ weight
     for p, i, j in layout.mixed:
-        mean = a[i:j].T @ d["x"][i:j]
+        mean = layout.a[i:j].T @ d["x"][i:j]
         flat += (ratio[p] - d["size"][p]) * mean[low] * mean[high]
     full: Array = np.empty((c, c, weight.shape[1]))
     full[low, high] = flat
+    full[high, low] = flat
     return full
 
 
@@ -161,8 +164,7 @@ def _direction(layout: Layout, d: Draws) -> tuple[Array, Array, Array]:
     """Newton direction: d lambda, d s, d ln N."""
     a, k = layout.a, layout.closed
     phase = layout.phase[:k]
-    t = d["t"]
-    rc: Array = np.where(t <= 1.0, np.log(np.minimum(t, 1.0)), 1.0 - 1.0 / np.maximum(t, 1.0))
+    rc: Array = d["below"] + (1.0 - 1.0 / d["above"])
     load: Array = d["size"] * (rc - d["e3"] / d["slack"])
     r: Array = a[:k].T @ (load[phase] * d["x"][:k]) - d["flow"] * d["e1"]
     matrix = _matrix(layout, d)
@@ -173,8 +175,9 @@ def _direction(layout: Layout, d: Draws) -> tuple[Array, Array, Array]:
     step = scale * solve_spd(matrix, scale * r)
     du: Array = a[:k] @ step
     moved: Array = np.empty_like(d["slack"])
-    for p, (i, j) in enumerate(layout.edges):
-        moved[p] = du[i] if j - i == 1 else (du[i:j] * d["x"][i:j]).sum(axis=0)
+    moved[layout.pure[0]] = du[layout.pure[1]]
+    for p, i, j in layout.mixed:
+        moved[p] = (du[i:j] * d["x"][i:j]).sum(axis=0)
     ds: Array = -d["e3"] - moved
     return step, ds, -rc - ds / d["slack"]
 
@@ -202,11 +205,12 @@ def _advance(layout: Layout, d: Draws) -> tuple[Draws, NDArray[np.bool_]]:
         if not len(index):
             break
         alpha[index] *= 0.4
-        part = {key: value[..., index] for key, value in d.items()}
+        part = {key: d[key][..., index] for key in _NEEDED}
         tried = _move(layout, part, (step[:, index], ds[:, index], move[2][:, index]), alpha[index])
         still = _rejected(part, tried, alpha[index], least[:, index])
+        taken = index[~still]
         for key, value in tried.items():
-            new[key][..., index[~still]] = value[..., ~still]
+            new[key][..., taken] = value[..., ~still]
         index = index[still]
     new["alpha"] = alpha
     stuck = np.zeros(alpha.shape, dtype=bool)
@@ -256,6 +260,8 @@ def _reduce(d: Draws, start: Start) -> None:
     factor: Array = np.where(near, np.where(good, start.fast, start.slow), 1.0)
     factor = np.where(d["mu"] > start.end, factor, 1.0)
     cut = factor < 1.0
+    if not (cut.any() or start.homotopy):
+        return
     for kept, now in (("size0", "size"), ("slack0", "slack")):
         d[kept] = np.where(cut, d[now], d[kept])
     d["mu"] = d["mu"] * factor

@@ -6,6 +6,7 @@ sums of positive terms, so that contents of parts per trillion keep all their di
 
 from __future__ import annotations
 
+import contextlib
 from dataclasses import dataclass
 
 import numpy as np
@@ -130,10 +131,9 @@ def solve(matrix: Array, right: Array) -> Array:
     row, col = _scales(matrix)
     scaled: Array = matrix * row[:, :, None] * col[:, None, :]
     load: Array = right * row[:, :, None]
-    try:
-        answer: Array = np.linalg.solve(scaled, load)
-    except np.linalg.LinAlgError:
-        answer = np.full_like(load, np.inf)
+    answer: Array = np.full_like(load, np.inf)
+    with contextlib.suppress(np.linalg.LinAlgError):
+        answer[...] = np.linalg.solve(scaled, load)
     # A potential that no present phase fixes, or more pure phases than potentials.
     wild = ~(np.abs(answer).max(axis=(1, 2)) < 1e8 * np.maximum(np.abs(load).max(axis=(1, 2)), 1e-300))
     if wild.any():

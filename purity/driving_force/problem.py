@@ -161,7 +161,7 @@ def reduce(
     volatile = system.phases.index(GAS) if gas_volume is not None and GAS in system.phases else -1
     if gas_volume is not None and volatile < 0:
         raise IllPosedError(f"a gas volume is given but no phase is named {GAS!r}")
-    bare = ~(formula[:, present] > 0).any(axis=1)
+    bare: Mask = formula[:, present].sum(axis=1) == 0
     for p in range(len(system.phases)):
         members = keep & (system.phase == p)
         if p != volatile and bare[members].all():
@@ -257,7 +257,7 @@ def _posed(
     if not brings:
         raise IllPosedError("nothing is put in: every amount is zero")
     names = elements if bare else [_written(row, elements) for row in brings]
-    outside = components.check_span(formula, brings, names, elements)
+    outside = components.check_span(formula, brings, tuple(names), tuple(elements))
     if outside and not bare:
         raise IllPosedError(
             f"no combination of {', '.join(species)} has the composition of {names[outside[0]]}: "
