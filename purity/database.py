@@ -239,7 +239,7 @@ def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Lib
     digest = blake2b("".join(f"{n}{h}" for n, h in file_hashes(DATA).items()).encode(), digest_size=16)
     if overlay is not None:
         folder = Path(overlay)
-        faults = check(folder, sources)
+        faults = check(folder)
         if faults:
             raise DataError(str(folder), faults)
         own, own_sources, _ = read_folder(folder, yours=True)

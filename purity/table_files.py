@@ -16,7 +16,7 @@ from hashlib import blake2b
 from math import inf, isfinite, log
 from pathlib import Path
 
-from purity.bounds import out_of_bounds
+from purity.bounds import out_of_bounds, too_far_apart
 from purity.errors import Fault
 from purity.tables import TABLES, Record, Table, quantity_name
 
@@ -24,6 +24,8 @@ from purity.tables import TABLES, Record, Table, quantity_name
 DATA = Path(__file__).with_name("data")
 #: How a number was come by.
 ORIGINS = ("looked-up", "memory", "derived", "computed", "estimate")
+#: Tables whose rows of one quantity are held against each other.
+COMPARED = ("solubility", "sieverts", "activity")
 #: Columns that a table may do without.
 OPTIONAL = ("rank", "note")
 SOURCE_COLUMNS = ("key", "citation", "address", "origin")
@@ -209,7 +211,7 @@ def quality(spec: Table, origin: str, spread: float) -> str:
     return "A" if origin == "looked-up" and narrow else "B"
 
 
-def _row_faults(record: Record, sources: Mapping[str, object]) -> Iterator[str]:
+def _row_faults(record: Record, sources: Mapping[str, object], melting: Mapping[str, float]) -> Iterator[str]:
     spec = TABLES[record.table]
     if record.rank == 0 and record.yours:
         return
@@ -229,51 +231,58 @@ def _row_faults(record: Record, sources: Mapping[str, object]) -> Iterator[str]:
         yield f"spread_factor is {record.spread:g}: a factor is 1 or more"
     if spec.spread and record.spread <= (1.0 if spec.law and spec.spread == "spread_factor" else 0.0):
         yield f"{spec.spread} is {record.spread:g}: nothing is known exactly"
-    yield from out_of_bounds(record)
+    yield from out_of_bounds(record, melting)
 
 
-def _faults(tables: Rows, sources: Mapping[str, object]) -> list[Fault]:
+def _faults(tables: Rows, sources: Mapping[str, object], melting: Mapping[str, float]) -> list[Fault]:
     faults: list[Fault] = []
     for table, records in tables.items():
         seen: dict[tuple[str, int, float | None], int] = {}
+        quantities: defaultdict[str, list[Record]] = defaultdict(list)
         for record in records:
             name = f"{table}.csv: {record.quantity}"
-            faults.extend(Fault(record.line, name, text) for text in _row_faults(record, sources))
+            faults.extend(Fault(record.line, name, text) for text in _row_faults(record, sources, melting))
             place = (record.quantity, record.rank, record.fields.get("T_K"))
             if place in seen:
                 text = f"line {seen[place]} has the same quantity and rank {record.rank}"
                 faults.append(Fault(record.line, name, text))
             seen.setdefault(place, record.line)
+            quantities[record.quantity].append(record)
+        if table in COMPARED:
+            apart = [pair for rows in quantities.values() for pair in too_far_apart(rows)]
+            faults.extend(Fault(r.line, f"{table}.csv: {r.quantity}", text) for r, text in apart)
     return faults
 
 
-def check(folder: Path, known: Mapping[str, object] | None = None) -> list[Fault]:
-    """Check a user's folder of tables.
+def _melting(tables: Rows) -> dict[str, float]:
+    rows = tables.get("transitions", ())
+    return {r.words["element"]: r.fields["T_K"] for r in rows if r.words["kind"] == "melting"}
+
+
+def check(folder: Path) -> list[Fault]:
+    """Check a user's folder of tables, whose rows may also name the sources of the package.
 
     Parameters
     ----------
     folder : path
-    known : mapping, optional
-        Sources that its rows may name besides its own; those of the package where left out.
 
     Returns
     -------
     list of Fault
         Each with file and line; empty for a folder that :func:`purity.database.load` takes.
     """
-    if known is None:
-        known = read_folder(DATA)[1]
+    base, known, _ = read_folder(DATA)
     tables, sources, faults = read_folder(folder, yours=True)
     for key in sorted(set(sources) & set(known)):
         place = f"{sources[key]['file']}: {key}"
         faults.append(Fault(int(sources[key]["line"]), place, "is a source of the package: use another key"))
-    return sorted([*faults, *_faults(tables, {**known, **sources})])
+    return sorted([*faults, *_faults(tables, {**known, **sources}, _melting({**base, **tables}))])
 
 
 def verify(folder: Path = DATA) -> list[Fault]:
     """Check the tables of the package: all rules, every table there, sources used, files unchanged."""
     tables, sources, faults = read_folder(folder)
-    faults += _faults(tables, sources)
+    faults += _faults(tables, sources, _melting(tables))
     faults += [Fault(0, f"{name}.csv", "is missing") for name in TABLES if name not in tables]
     used = {key for records in tables.values() for r in records for key in r.source.split(";")}
     for key in sorted(set(sources) - used):
