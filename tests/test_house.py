@@ -68,8 +68,9 @@ ALLOWED: dict[str, set[str]] = {
     "driving_force.equilibrium": NUMBERS | EQUILIBRIUM,
     "driving_force.sensitivity": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
     "driving_force.nonideal": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
+    "driving_force.pure": NUMBERS | {"database", "draws"},
     "driving_force.substances": NUMBERS
-    | {"database", "draws", "driving_force.solution", "driving_force.equilibrium"},
+    | {"database", "draws", "driving_force.solution", "driving_force.pure", "driving_force.estimate"},
     "driving_force.estimate": NUMBERS
     | {"database", "draws", "driving_force.solution", "driving_force.equilibrium"},
     "driving_force.species": NUMBERS | {"database", "draws"} | (DRIVING_FORCE - {"driving_force.species"}),

@@ -1,186 +1,91 @@
-"""Gibbs energies over temperature: pure substances, the host, and what is dissolved in it.
+"""Gibbs energies of the host and of what is dissolved in it, and what a compound saturates it with.
 
-All energies are molar, J/mol, and refer to the elements at 298.15 K and 1 bar. Each record has its own
-standard normal variable, drawn by the name of what it describes, so that the spread of a difference is
-that of the records in it and nothing is counted twice.
+Pure substances are in :mod:`purity.driving_force.pure`; their names can be had here too.
 """
 
 from __future__ import annotations
 
-import re
-from collections import defaultdict
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
-from functools import lru_cache
 from math import log
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from purity.constants import ATM, P0, R
-from purity.database import TABLES, Found, Gap, Library, Record, ln_value, outside, parameters, spread_at
+from purity.database import Found, Gap, Library, Record, ln_value, outside, parameters
 from purity.draws import Draws, normal
 from purity.driving_force import estimate
+from purity.driving_force.pure import (
+    Energy,
+    atoms,
+    combine,
+    element_energy,
+    formation,
+    found,
+    gibbs_energy,
+    stable,
+    substances,
+    vapour,
+)
+
+__all__ = [
+    "Energy",
+    "Measured",
+    "atoms",
+    "combine",
+    "element_energy",
+    "formation",
+    "found",
+    "gibbs_energy",
+    "host_energy",
+    "ln_dissolution",
+    "ln_gamma",
+    "measured_ceiling",
+    "molar_mass",
+    "reconcile",
+    "solute",
+    "solute_record",
+    "stable",
+    "substances",
+    "vapour",
+]
 
 Array = NDArray[np.float64]
 
-T_REF = 298.15
-#: H298, S298, a, b, c, d.
-COEFFICIENTS = TABLES["gibbs"].numbers[:6]
 #: State of the pure solute that a record of activity refers to.
 REFERENCES: Mapping[str, str] = {"l": "liquid", "s": "solid", "gr": "solid"}
+#: Standard deviations by which a measured saturation may differ from a computed one before it replaces it.
+CONFLICT = 2.0
+#: Draws with which the spread of a computed saturation is judged: the same in every run.
+SCATTER = Draws(seed=1, blocks=1)
+#: Uncertainty of d ln x / d(1/T) with which a saturation is carried from the temperature of a measurement, K.
+SLOPE = 2000.0
 
 
 @dataclass(frozen=True, slots=True)
-class Energy:
-    """A Gibbs energy per draw, or a logarithm made of some.
+class Measured:
+    """Measured saturation of a host with a phase, beside the one that the Gibbs energies give.
 
     Parameters
     ----------
-    value : (K, N) or (N,) array
-        J/mol, or 1 where a function says so.
-    found : tuple of Found
-        The records it rests on.
-    outside : bool array
-        Where a record is carried beyond its range; shape of `value`.
+    ln_x : (K, N) or (N,) array
+        ln of the mole fraction (per mole of host) at saturation.
+    sigma : array
+        One standard deviation of ln x that comes from the measurement and its distance in temperature.
+    deviation : array
+        Measured less computed ln x at the median, carried to T; 0 where nothing could be computed.
+    conflict : bool array
+        The two differ by more than two standard deviations at the nearest measurement.
+    found : Found
+        The nearest record with the others of its quantity.
     """
 
-    value: Array
-    found: tuple[Found, ...]
-    outside: NDArray[np.bool_]
-
-
-@lru_cache(maxsize=4096)
-def _counts(formula: str) -> tuple[tuple[str, float], ...]:
-    counts: defaultdict[str, float] = defaultdict(float)
-    stack: list[defaultdict[str, float]] = [counts]
-    end = 0
-    for match in re.finditer(r"([A-Z][a-z]?)(\d*\.?\d*)|(\()|\)(\d*\.?\d*)", formula):
-        element, number, opening, times = match.groups()
-        if match.start() != end:
-            break
-        end = match.end()
-        if element:
-            stack[-1][element] += float(number or 1)
-        elif opening:
-            stack.append(defaultdict(float))
-        elif len(stack) > 1:
-            inner = stack.pop()
-            for name, count in inner.items():
-                stack[-1][name] += count * float(times or 1)
-    if end != len(formula) or len(stack) != 1 or not counts:
-        raise ValueError(f"{formula!r} is not a chemical formula")
-    return tuple(counts.items())
-
-
-def atoms(formula: str) -> dict[str, float]:
-    """Count the atoms of a formula: ``Fe0.947O``, ``Ca(OH)2``.
-
-    Raises
-    ------
-    ValueError
-        For text that is no formula.
-    """
-    return dict(_counts(formula))
-
-
-class _Same:
-    """Key of a cache by identity: tables never change."""
-
-    __slots__ = ("rows",)
-
-    def __init__(self, rows: tuple[Record, ...]) -> None:
-        self.rows = rows
-
-    def __hash__(self) -> int:
-        return id(self.rows)
-
-    def __eq__(self, other: object) -> bool:
-        return isinstance(other, _Same) and other.rows is self.rows
-
-
-@lru_cache(maxsize=16)
-def _by_substance(same: _Same) -> Mapping[tuple[str, str], tuple[Record, ...]]:
-    best: dict[str, Record] = {}
-    for record in same.rows:
-        best.setdefault(record.quantity, record)
-    index: defaultdict[tuple[str, str], list[Record]] = defaultdict(list)
-    for record in best.values():
-        index[record.words["formula"], record.words["state"]].append(record)
-    return {key: tuple(records) for key, records in index.items()}
-
-
-def substances(library: Library) -> Mapping[tuple[str, str], tuple[Record, ...]]:
-    """Return the rows of every (formula, state) of the Gibbs table: polymorphs and temperature pieces."""
-    return _by_substance(_Same(library.tables.get("gibbs", ())))
-
-
-def piece(record: Record, T: ArrayLike) -> Array:
-    """Return G of one row, Cp = a + bT + c/T^2 + dT^2, J/mol; a continuation outside its range."""
-    t = np.asarray(T, dtype=float)
-    H, S, a, b, c, d = (record.fields[name] for name in COEFFICIENTS)
-    heat = a * (t - T_REF) + b * (t**2 - T_REF**2) / 2 - c * (1 / t - 1 / T_REF) + d * (t**3 - T_REF**3) / 3
-    disorder = (
-        a * np.log(t / T_REF) + b * (t - T_REF) - c * (t**-2 - T_REF**-2) / 2 + d * (t**2 - T_REF**2) / 2
-    )
-    return np.asarray(H + heat - t * (S + disorder))
-
-
-def _beyond(record: Record, t: Array) -> Array:
-    return np.maximum(np.maximum(record.T_min / t, t / record.T_max), 1.0)
-
-
-def gibbs_energy(library: Library, formula: str, state: str, T: ArrayLike, draws: Draws) -> Energy | Gap:
-    """Return G of a pure substance: the lowest of its polymorphs that are tabulated at T.
-
-    Parameters
-    ----------
-    library : Library
-    formula : str
-    state : {"solid", "liquid", "gas"}
-        A gas is at 1 bar.
-    T : () , (N,), (K, 1) or (K, N) array_like
-        K. Outside every row the nearest is continued with a wider spread.
-    draws : Draws
-
-    Returns
-    -------
-    Energy or Gap
-        J per mole of formula; all rows of a substance share one standard normal variable.
-    """
-    rows = substances(library).get((formula, state), ())
-    if not rows:
-        other = tuple(f"{f}/{s}" for f, s in substances(library) if f == formula)
-        return Gap(f"gibbs:{formula}/{state}", f"no Gibbs energy of {formula} as a {state}", other)
-    t = np.asarray(T, dtype=float)
-    energies = np.stack([piece(row, t) for row in rows])
-    beyond = np.stack([_beyond(row, t) for row in rows])
-    nearest = beyond <= beyond.min(axis=0) * (1.0 + 1e-12)
-    chosen = np.where(nearest, energies, np.inf).argmin(axis=0)
-    spread = np.stack([np.broadcast_to(spread_at(row, t), t.shape) for row in rows])
-    z = normal(draws, f"gibbs:{formula}/{state}")[0]
-    value = _take(energies, chosen) + _take(spread, chosen) * z
-    used = tuple(found(library, rows[i]) for i in np.unique(chosen))
-    return Energy(value, used, np.broadcast_to(beyond.min(axis=0) > 1.0, value.shape))
-
-
-def _take(stack: Array, index: NDArray[np.int64]) -> Array:
-    return np.asarray(np.take_along_axis(stack, index[np.newaxis], axis=0)[0])
-
-
-def found(library: Library, record: Record) -> Found:
-    """Return a record with its rivals."""
-    rivals = tuple(other for other in library.rivals(record.quantity) if other is not record)
-    return Found(record, rivals, "yours" if record.yours else "measured")
-
-
-def combine(parts: Iterable[tuple[float, Energy]]) -> Energy:
-    """Add energies with factors; each record is named once."""
-    factors, energies = zip(*parts, strict=True)
-    value = sum(f * e.value for f, e in zip(factors, energies, strict=True))
-    beyond = np.any(np.stack(np.broadcast_arrays(*(e.outside for e in energies))), axis=0)
-    named = {f.record.quantity: f for e in energies for f in e.found}
-    return Energy(np.asarray(value, dtype=float), tuple(named.values()), beyond)
+    ln_x: Array
+    sigma: Array
+    deviation: Array
+    conflict: NDArray[np.bool_]
+    found: Found
 
 
 def host_energy(library: Library, host: str, phase: str, T: ArrayLike, draws: Draws) -> Energy | Gap:
@@ -216,16 +121,22 @@ def solute(library: Library, host: str, phase: str, element: str, T: ArrayLike, 
     """
     if element == host:
         return host_energy(library, host, phase, T, draws)
-    key = {"host": host, "phase": phase, "solute": element}
-    record = library.find("activity", **key)
-    if isinstance(record, Gap):
-        gas = library.find("sieverts", **key)
-        if isinstance(gas, Found):
-            return _from_gas(library, host, element, gas, T, draws)
-        record = estimate.activity(library, host, phase, element)
+    record = solute_record(library, host, phase, element)
     if isinstance(record, Gap):
         return record
+    if record.record.table == "sieverts":
+        return _from_gas(library, host, element, record, T, draws)
     return _from_activity(library, element, record, T, draws)
+
+
+def solute_record(library: Library, host: str, phase: str, element: str) -> Found | Gap:
+    """Return the record of an element in a host: activity, else Sieverts constant, else an estimate."""
+    key = {"host": host, "phase": phase, "solute": element}
+    for table in ("activity", "sieverts"):
+        record = library.find(table, **key)
+        if isinstance(record, Found):
+            return record
+    return estimate.activity(library, host, phase, element)
 
 
 def ln_gamma(record: Found, T: ArrayLike, draws: Draws) -> Array:
@@ -277,66 +188,157 @@ def ln_dissolution(
     """Return ln K of a compound, or a gas at 1 bar, that dissolves atom by atom.
 
     At equilibrium sum nu_i ln x_i = ln K over its atoms other than the host, whose atoms in the compound
-    have the given activity; a product below K is undersaturated.
+    have the given activity; a product below K is undersaturated. Where the saturation of the host with
+    the compound has been measured and differs by more than two standard deviations, the measurement is
+    used (see :func:`reconcile`), as it is where nothing can be computed.
 
     Returns
     -------
     Energy or Gap
         Without dimension.
     """
+    computed = _ln_computed(library, host, phase, formula, state, T, draws)
+    chosen = computed if state == "gas" else reconcile(library, host, phase, formula, T, draws, computed)
+    if isinstance(chosen, Gap):
+        return chosen
+    shift = atoms(formula).get(host, 0.0) * np.log(activity_of_host)
+    return Energy(chosen.value - shift, chosen.found, chosen.outside)
+
+
+def _ln_computed(
+    library: Library, host: str, phase: str, formula: str, state: str, T: ArrayLike, draws: Draws
+) -> Energy | Gap:
     substance = gibbs_energy(library, formula, state, T, draws)
     if isinstance(substance, Gap):
         return substance
     parts: list[tuple[float, Energy]] = [(1.0, substance)]
-    counts = atoms(formula)
-    for element, count in counts.items():
+    for element, count in atoms(formula).items():
         dissolved = solute(library, host, phase, element, T, draws)
         if isinstance(dissolved, Gap):
             return dissolved
         parts.append((-count, dissolved))
     total = combine(parts)
-    ln_k = total.value / (R * np.asarray(T, dtype=float))
-    return Energy(ln_k - counts.get(host, 0.0) * np.log(activity_of_host), total.found, total.outside)
+    return Energy(total.value / (R * np.asarray(T, dtype=float)), total.found, total.outside)
 
 
-def vapour(library: Library, element: str, T: ArrayLike, draws: Draws) -> Energy | Gap:
-    """Return ln of the pressure of the atoms of an element over its stable condensed form, bar.
+def measured_ceiling(
+    library: Library, host: str, phase: str, element: str, with_: str, T: ArrayLike, draws: Draws
+) -> Measured | Gap:
+    """Return the measured content of a host saturated with a phase, carried over temperature.
+
+    Between and beyond the measured points the shape of the computed saturation is kept, and its distance
+    from the points is interpolated in 1/T; where nothing can be computed, ln x itself is.
+
+    Parameters
+    ----------
+    library : Library
+    host, phase, element : str
+    with_ : str
+        Formula of the saturating phase; `C` for graphite.
+    T : array_like
+        K.
+    draws : Draws
+
+    Returns
+    -------
+    Measured or Gap
+    """
+    points = _points(library, host, phase, element, with_)
+    host_mass, mass = molar_mass(library, host), molar_mass(library, element)
+    if not points:
+        return Gap(f"solubility:{host}/{phase}/{element}/{with_}", "no measured saturation")
+    if isinstance(host_mass, Gap):
+        return host_mass
+    if isinstance(mass, Gap):
+        return mass
+    t = np.asarray(T, dtype=float)
+    at = np.array([record.fields["T_K"] for record in points])
+    share = np.array([record.fields["limit_ppm_mass"] for record in points]) * 1e-6
+    spread = np.array([record.spread for record in points])
+    published = np.log(share / (1.0 - share) * host_mass / mass)
+    base, own, scatter = _own(library, host, phase, element, with_, t, at)
+    off = published - own
+    doubt = np.abs(off) > CONFLICT * np.hypot(scatter, spread)
+    bound = np.array(["upper bound" in record.words["note"] for record in points])
+    nearest = np.abs(1.0 / t[..., np.newaxis] - 1.0 / at).argmin(axis=-1)
+    sigma = np.hypot(spread[nearest], SLOPE * np.abs(1.0 / t - 1.0 / at[nearest]))
+    deviation = np.interp(1.0 / t, 1.0 / at[::-1], off[::-1])
+    value = base + deviation + sigma * normal(draws, points[0].quantity)[0]
+    return Measured(
+        value,
+        np.broadcast_to(sigma, value.shape),
+        np.broadcast_to(deviation if np.ndim(base) else np.zeros(()), value.shape),
+        np.broadcast_to((doubt & ~(bound & (off > 0)))[nearest], value.shape),
+        found(library, points[int(np.ravel(nearest)[0])]),
+    )
+
+
+def _points(library: Library, host: str, phase: str, element: str, with_: str) -> tuple[Record, ...]:
+    """Best record at each temperature, by temperature."""
+    best: dict[float, Record] = {}
+    for record in library.rivals(f"solubility:{host}/{phase}/{element}/{with_}"):
+        best.setdefault(record.fields["T_K"], record)
+    return tuple(best[T] for T in sorted(best))
+
+
+def _own(
+    library: Library, host: str, phase: str, element: str, formula: str, t: Array, at: Array
+) -> tuple[Array, Array, Array]:
+    """Computed ln x at t, at the measured temperatures, and its spread there; zeros where there is none."""
+    counts = atoms(formula)
+    nothing = np.zeros(()), np.zeros(at.shape), np.zeros(at.shape)
+    if set(counts) - {host} != {element}:
+        return nothing
+    here = _ln_computed(library, host, phase, formula, "solid", t, Draws.nominal())
+    there = _ln_computed(library, host, phase, formula, "solid", at[:, np.newaxis], Draws.nominal())
+    if isinstance(here, Gap) or isinstance(there, Gap):
+        return nothing
+    scatter = _ln_computed(library, host, phase, formula, "solid", at[:, np.newaxis], SCATTER)
+    assert isinstance(scatter, Energy)
+    count = counts[element]
+    return here.value / count, there.value[:, 0] / count, np.std(scatter.value, axis=-1) / count
+
+
+def reconcile(
+    library: Library,
+    host: str,
+    phase: str,
+    formula: str,
+    T: ArrayLike,
+    draws: Draws,
+    computed: Energy | Gap,
+) -> Energy | Gap:
+    """Put the measured saturation in the place of a computed ln K where they differ by two sigma or more.
+
+    Parameters
+    ----------
+    library : Library
+    host, phase, formula : str
+    T : array_like
+        K.
+    draws : Draws
+    computed : Energy or Gap
+        ln K as :func:`ln_dissolution` has it, host at activity 1.
 
     Returns
     -------
     Energy or Gap
-        ln(p / 1 bar), without dimension.
+        `computed` where there is no measurement or no conflict; else with the measurement named first.
     """
-    gas = gibbs_energy(library, element, "gas", T, draws)
-    if isinstance(gas, Gap):
-        return gas
-    condensed = stable(library, element, T, draws)
-    if isinstance(condensed, Gap):
-        return condensed
-    total = combine([(1.0, condensed), (-1.0, gas)])
-    return Energy(total.value / (R * np.asarray(T, dtype=float)), total.found, total.outside)
-
-
-def stable(library: Library, formula: str, T: ArrayLike, draws: Draws) -> Energy | Gap:
-    """Return G of the more stable of the solid and the liquid at T, judged at the medians, J/mol."""
-    made = [gibbs_energy(library, formula, state, T, draws) for state in ("solid", "liquid")]
-    energies = [e for e in made if isinstance(e, Energy)]
-    if not energies:
-        return next(e for e in made if isinstance(e, Gap))
-    if len(energies) == 1:
-        return energies[0]
-    solid, liquid = energies
-    medians = [gibbs_energy(library, formula, state, T, Draws.nominal()) for state in ("solid", "liquid")]
-    first, second = (m.value for m in medians if isinstance(m, Energy))
-    melted = np.broadcast_to(second < first, np.broadcast_shapes(solid.value.shape, second.shape))
-    used = {
-        f.record.quantity: f
-        for e, there in ((solid, ~melted), (liquid, melted))
-        if there.any()
-        for f in e.found
-    }
+    counts = atoms(formula)
+    solutes = [element for element in counts if element != host]
+    if len(solutes) != 1:
+        return computed
+    measured = measured_ceiling(library, host, phase, solutes[0], formula, T, draws)
+    if isinstance(measured, Gap):
+        return computed
+    value = counts[solutes[0]] * measured.ln_x
+    if isinstance(computed, Gap):
+        return Energy(value, (measured.found,), measured.sigma > 2.0 * measured.found.record.spread)
+    if not measured.conflict.any():
+        return computed
     return Energy(
-        np.where(melted, liquid.value, solid.value),
-        tuple(used.values()),
-        np.where(melted, liquid.outside, solid.outside),
+        np.where(measured.conflict, value, computed.value),
+        (measured.found, *computed.found),
+        np.broadcast_to(computed.outside, value.shape),
     )
