@@ -37,20 +37,22 @@ T_REF = 298.15
 #: Sources of the rows that are fitted here.
 FITTED = ("SUB-JANAF", "SUB-NASA")
 #: Worst error in G that a piece may have before it is cut, J/mol, and the shortest piece, points.
-AIM = 60.0
+AIM = 25.0
 SHORTEST = 5
 #: Error at which no further term of Cp is added, J/mol: fewer terms continue better beyond the table.
-ENOUGH = 15.0
+ENOUGH = 5.0
 #: Least spread of a class, J/mol.
 FLOOR = {"element": 200.0, "gas": 500.0, "oxide": 1500.0, "chloride": 1500.0, "fluoride": 1500.0}
 OTHER = 2500.0
 #: Coefficients in the order in which they are called for; no c/T^2 where nothing holds it at 298.15 K.
 PINNED = ((2,), (2, 3), (2, 3, 4), (2, 3, 4, 5))
-FREE = ((0, 1, 2), (0, 1, 2, 3), (0, 1, 2, 3, 5))
-COLUMNS = (
-    "formula state label class H298_J_per_mol S298_J_per_mol_K a_J_per_mol_K b_J_per_mol_K2 c_J_K_per_mol "
-    "d_J_per_mol_K3 fit_error_J_per_mol T_min_K T_max_K spread_J_per_mol rank source where origin note"
-).split()
+FREE = ((0, 1, 2), (0, 1, 2, 3))
+COLUMNS = [
+    *("formula", "state", "label", "class"),
+    *("H298_J_per_mol", "S298_J_per_mol_K", "a_J_per_mol_K", "b_J_per_mol_K2", "c_J_K_per_mol"),
+    *("d_J_per_mol_K3", "fit_error_J_per_mol", "T_min_K", "T_max_K", "spread_J_per_mol"),
+    *("rank", "source", "where", "origin", "note"),
+]
 
 
 def basis(T: Array) -> Array:
@@ -97,8 +99,8 @@ def janaf_points(index: str) -> tuple[Array, Array, float, float]:
     """T and G of a JANAF table, and its H298 and S298 (J, mol, K)."""
     from janaf import Table
 
-    frame = Table(index).df.select("T(K)", "-[G-H(Tr)]/T", "delta-f H", "S").drop_nulls(
-        ["T(K)", "-[G-H(Tr)]/T"]
+    frame = (
+        Table(index).df.select("T(K)", "-[G-H(Tr)]/T", "delta-f H", "S").drop_nulls(["T(K)", "-[G-H(Tr)]/T"])
     )
     T, free, dfH, S = (np.array(frame[name].to_list(), float) for name in frame.columns)
     T, free, dfH, S = (column[T > 0] for column in (T, free, dfH, S))
@@ -170,7 +172,9 @@ def spread(choice: Row, T: Array, G: Array) -> tuple[float, str]:
 
         frame = Table(choice["table"].split(":")[1]).df
         dfG = 1000 * float(frame.filter(frame["T(K)"] == T_REF)["delta-f G"][0])
-        found.append((0.7 * abs(dfG - float(choice["crc_dGf298_J_per_mol"])), "CRC value at 298.15 K differs"))
+        found.append(
+            (0.7 * abs(dfG - float(choice["crc_dGf298_J_per_mol"])), "CRC value at 298.15 K differs")
+        )
     return max(found)
 
 
@@ -225,7 +229,11 @@ def read(path: Path = TABLE) -> list[Row]:
 
 
 def main() -> None:
-    others = [row for row in read() if row["origin"] == "derived" or row["source"] not in FITTED] if TABLE.exists() else []
+    others = (
+        [row for row in read() if row["origin"] == "derived" or row["source"] not in FITTED]
+        if TABLE.exists()
+        else []
+    )
     rows = [row for choice in choices() for row in fit(choice)] + others
     rows.sort(key=lambda row: (row["formula"], row["state"], float(row["T_min_K"]), row["label"]))
     with TABLE.open("w", newline="", encoding="utf-8") as file:
