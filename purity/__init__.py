@@ -18,7 +18,6 @@ _ROOMS = {
     "Result": "result",
     "Scenario": "scenario",
     "ScenarioError": "errors",
-    "assess": "assess",
     "load": "database",
     "read": "scenario_file",
     "render": "report.terminal",
@@ -30,7 +29,6 @@ _ROOMS = {
 __all__ = [*_ROOMS, "__version__"]
 
 if TYPE_CHECKING:
-    from purity.assess import assess as assess
     from purity.database import Library as Library
     from purity.database import load as load
     from purity.draws import Draws as Draws
