@@ -86,7 +86,8 @@ def test_no_name_means_two_things(library: Library, table: str) -> None:
     [
         "isostatic graphite, purified", "magnesia", "fused silica sheath", "alumina 99.7", "alumina",
         "yttria", "graphite", "molybdenum", "tungsten", "ceramic muffle", "quartz tube", "steel retort",
-        "pyrolytic boron nitride", "water-cooled copper", "steel mould", "alumina 99.9", "tantalum foil", "calcia",
+        "pyrolytic boron nitride", "water-cooled copper", "steel mould", "alumina 99.9", "tantalum foil",
+        "calcia",
     ],
 )  # fmt: skip
 def test_names_as_a_plant_says_them(library: Library, name: str) -> None:
