@@ -50,14 +50,16 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.laplace": NUMBERS,
     "kinetics.modes": NUMBERS | {"kinetics.laplace"},
     "kinetics.march": NUMBERS | {"kinetics.modes"},
-    "kinetics.surface": NUMBERS | KINETICS_BASE,
     "kinetics.pieces": NUMBERS
     | KINETICS_BASE
-    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.surface"},
+    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.flux_newton"},
+    "kinetics.passage": NUMBERS
+    | KINETICS_BASE
+    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.flux_newton", "kinetics.pieces"},
     "kinetics.bath": NUMBERS | KINETICS_BASE | {"scenario"},
     "kinetics.body": NUMBERS
     | KINETICS_BASE
-    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.surface", "kinetics.pieces"},
+    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.pieces", "kinetics.passage"},
     "kinetics.films": NUMBERS | KINETICS_BASE | {"scenario"},
     "kinetics.advance": NUMBERS | {"scenario", "kinetics.*"},
     "driving_force.solution": NUMBERS,

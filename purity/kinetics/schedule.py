@@ -143,7 +143,8 @@ def fractions(segment: Segment, *, hold: int = 16, ramp: int = 24, first: float 
     ----------
     segment : Segment
     hold, ramp : int
-        Number of steps. Those of a hold grow geometrically, those of a ramp are equal.
+        Number of steps. Those of a hold grow geometrically; those of a ramp are equal in ln T, so that
+        the cold end, where equilibria change fastest, is not passed in one.
     first : float
         First step of a hold as a fraction of it.
 
@@ -152,9 +153,13 @@ def fractions(segment: Segment, *, hold: int = 16, ramp: int = 24, first: float 
     (n + 1,) array
         0 ... 1.
     """
-    if not segment.hold:
-        return np.linspace(0.0, 1.0, ramp + 1)
-    return geometric(hold, first)
+    if segment.hold:
+        return geometric(hold, first)
+    T1, T2 = float(np.mean(segment.T1)), float(np.mean(segment.T2))
+    even = np.linspace(0.0, 1.0, ramp + 1)
+    if abs(T2 - T1) < HOLD:
+        return even
+    return np.asarray(np.expm1(even * np.log(T2 / T1)) / (T2 / T1 - 1.0))
 
 
 def geometric(n: int, first: float) -> Array:

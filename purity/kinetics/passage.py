@@ -1,0 +1,248 @@
+"""One passage of a piece through a course of steps: SDIRK stages, ledger, inventories, profile."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from purity.constants import DILUTE
+from purity.kinetics import modes
+from purity.kinetics.exposure import Array, ln_at
+from purity.kinetics.modes import CARRY, GAMMA
+from purity.kinetics.pieces import (
+    MOST_BI,
+    SKIN,
+    Flags,
+    Interior,
+    Piece,
+    Rates,
+    Step,
+    Surface,
+    coefficients,
+    interior,
+    layer_share,
+    rates,
+    spread,
+    surface,
+)
+from purity.kinetics.stage import Coefficients
+
+#: A part of a schedule that gives more than this share of the uptake must be resolved by the basis.
+MATTERS = 0.01
+
+
+@dataclass(frozen=True, slots=True)
+class Passage:
+    """What became of a piece.
+
+    Parameters
+    ----------
+    mean : (I, N) array
+        Mean dissolved content.
+    film : (I, N) array
+        Held by skins, mol per mol of host.
+    profile : (I, M, N) array
+        Modal amplitudes of the piece.
+    ledger : (S, I, N) array
+        Gained through each contact.
+    flags, attacked : (N,) bool arrays
+        Not solved; surface beyond the dilute range.
+    coarse : bool
+        A part that matters is shorter than the basis resolves.
+    history : (I, K, N) array or None
+    """
+
+    mean: Array
+    film: Array
+    profile: Array
+    ledger: Array
+    flags: Flags
+    attacked: Flags
+    coarse: bool
+    history: Array | None
+
+
+@dataclass(slots=True)
+class _State:
+    """Where a passage stands."""
+
+    y: Array
+    mean: Array
+    ledger: Array
+    film: Array
+    peak: Array
+
+
+def carry(piece: Piece, course: Sequence[Step], count: int = 25, *, history: bool = False) -> Passage:
+    """Carry a piece through a course of steps.
+
+    Parameters
+    ----------
+    piece : Piece
+    course : sequence of Step
+    count : {25, 33, 41}
+        Modes.
+    history : bool
+        Record contents (with skins) at the ends of the steps.
+    """
+    paths = [spread(piece, step) for step in course]
+    share = layer_share(piece, np.asarray(sum(paths)))
+    inside, contact = interior(piece, count, share), surface(piece)
+    state = _begin(piece, inside, len(piece.exposures))
+    record = [state.mean + state.film]
+    gained: list[Array] = []
+    last: tuple[Step, Rates, tuple[Coefficients, Coefficients]] | None = None
+    scale = (piece.R * share) ** 2
+    for step, path in zip(course, paths, strict=True):
+        d, before = path / scale, state.mean + state.film
+        laws = _laws(piece, contact, step, path, share, last)
+        last = (step, *laws)
+        _advance(piece, inside, contact, state, step, d, laws[1])
+        gained.append(np.abs(state.mean + state.film - before))
+        if history:
+            record.append(state.mean + state.film)
+    return Passage(
+        state.mean,
+        state.film,
+        _profile(piece, inside, state, count),
+        state.ledger,
+        ~contact.solved,
+        np.asarray(state.peak > DILUTE),
+        _coarse(gained, [path / scale for path in paths], count),
+        np.stack(record, axis=1) if history else None,
+    )
+
+
+def _begin(piece: Piece, inside: Interior, contacts: int) -> _State:
+    count, draws = piece.x0.shape
+    if piece.profile is None:
+        plain = np.where(inside.share < 1.0, 1.0, inside.modes.g)
+        y: Array = np.zeros((len(inside.modes.rate), count, draws))
+        y[0] = piece.x0 / np.sqrt(plain)
+    else:
+        y = np.moveaxis(piece.profile, 1, 0)
+        matrix = modes.carry_over(piece.shape, len(inside.modes.rate), piece.shape, len(y))
+        y = np.tensordot(matrix, y, axes=1)
+    empty = np.zeros((contacts, count, draws))
+    flat = np.ascontiguousarray(y.reshape(len(y), -1))
+    return _State(flat, piece.x0.copy(), empty, np.zeros(piece.x0.shape), np.zeros(draws))
+
+
+def _laws(
+    piece: Piece,
+    contact: Surface,
+    step: Step,
+    path: Array,
+    share: Array,
+    last: tuple[Step, Rates, tuple[Coefficients, Coefficients]] | None,
+) -> tuple[Rates, tuple[Coefficients, Coefficients]]:
+    """Coefficients of both stages; kept through a hold."""
+    if last is not None and step.hold and last[0].hold and last[0].part == step.part:
+        return last[1], last[2]
+    length = np.maximum(step.length, 1e-300)
+    most = MOST_BI * piece.density * (path / length) / (piece.R * share)
+    mean = rates(contact.laws, step, np.maximum(most, 1e-200))
+    second = coefficients(contact.laws, mean, step.T2)
+    if step.hold:
+        return mean, (second, second)
+    return mean, (
+        coefficients(contact.laws, mean, step.T1 + _place(piece, step) * (step.T2 - step.T1)),
+        second,
+    )
+
+
+def _place(piece: Piece, step: Step) -> float:
+    """Fraction of the time of a step at which the first stage lies, gamma of the Fo of the mean impurity."""
+    rise = ln_at(piece.diffusivity, step.T2) - ln_at(piece.diffusivity, step.T1)
+    rise = rise[np.isfinite(rise)]
+    b = float(np.clip(rise.mean(), -30.0, 30.0)) if rise.size else 0.0
+    return float(GAMMA) if abs(b) < 1e-6 else float(np.log1p(GAMMA * np.expm1(b)) / b)
+
+
+def _advance(
+    piece: Piece,
+    inside: Interior,
+    contact: Surface,
+    state: _State,
+    step: Step,
+    d: Array,
+    laws: tuple[Coefficients, Coefficients],
+) -> None:
+    shape = piece.x0.shape
+    length = np.broadcast_to(step.length, shape[1:])
+    span = GAMMA * length
+    response = modes.respond(inside.modes, d.reshape(-1))
+    stretch = response.reach.reshape(shape) * inside.factor
+    to_flux = (span * inside.factor).reshape(-1)
+    most = contact.most(length)
+
+    rest, H = modes.still(inside.modes, response, state.y)
+    gain1, x1 = contact.act(laws[0], H.reshape(shape), stretch, span, most)
+    flux1 = contact.flux.copy()
+    y = modes.push(inside.modes, response, rest, to_flux * gain1.sum(axis=0).reshape(-1))
+
+    right = (1.0 - CARRY) * state.y + CARRY * y
+    rest, H = modes.still(inside.modes, response, right)
+    most = (most - (1.0 - GAMMA) * flux1) / GAMMA
+    gain2, x2 = contact.act(laws[1], H.reshape(shape), stretch, span, most)
+    state.y = modes.push(inside.modes, response, rest, to_flux * gain2.sum(axis=0).reshape(-1))
+
+    gain = length * ((1.0 - GAMMA) * gain1 + GAMMA * gain2)
+    state.mean = state.mean + gain.sum(axis=0)
+    state.ledger = state.ledger + gain
+    state.peak = np.maximum(state.peak, np.maximum(x1[0], x2[0]).max(axis=0))
+    _settle(piece, contact, state, length * ((1.0 - GAMMA) * flux1 + GAMMA * contact.flux))
+
+
+def _settle(piece: Piece, contact: Surface, state: _State, passed: Array) -> None:
+    """Take what the rows passed (mol/m2) off the inventories; what skins took stays a film."""
+    bath = contact.bath
+    for c, row in enumerate(bath.rows):
+        place = bath.place[c] - 1
+        units = bath.area[place] * passed[c]
+        if row.inventory is not None:
+            contact.left[c] = np.maximum(contact.left[c] - units, 0.0)
+        if row.limit == SKIN:
+            held = row.nu[:, None] * (units / piece.amount)
+            state.film = state.film - held
+            state.ledger[place] = state.ledger[place] - held
+
+
+def _profile(piece: Piece, inside: Interior, state: _State, count: int) -> Array:
+    """Amplitudes of the piece from those of its layers."""
+    y = state.y.reshape(count, *piece.x0.shape)
+    whole = modes.basis(piece.shape, count)
+    for share in np.unique(inside.share[inside.share < 1.0]):
+        rows = inside.share == share
+        deviation = y[:, rows]
+        deviation[0] -= piece.x0[rows]
+        y[:, rows] = modes.carry_over(piece.shape, count, "slab", count, float(share)) @ deviation
+    y[0] = state.mean / np.sqrt(whole.g)
+    return np.ascontiguousarray(np.moveaxis(y, 0, 1))
+
+
+def _coarse(gained: Sequence[Array], Fo: Sequence[Array], count: int) -> bool:
+    """Tell whether a step that matters is followed by too little diffusion for the basis."""
+    least = modes.GRADING[count][2]
+    if not least:
+        return False
+    matters = MATTERS * np.asarray(sum(gained))
+    ahead: Array = np.zeros(matters.shape)
+    for gain, d in zip(reversed(gained), reversed(Fo), strict=True):
+        ahead = ahead + d
+        if np.any((gain > matters) & (ahead < least)):
+            return True
+        if np.all(ahead >= least):
+            return False
+    return False
+
+
+def finest(piece: Piece, course: Sequence[Step], *, history: bool = False, least: int = 25) -> Passage:
+    """Carry a piece with as many modes as its shortest part that matters needs."""
+    for count in (n for n in modes.GRADING if n >= least):
+        passage = carry(piece, course, count, history=history)
+        if not passage.coarse:
+            break
+    return passage
