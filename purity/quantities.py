@@ -249,11 +249,11 @@ def rounded(value: float, digits: int = 2) -> str:
     """Return a number with so many significant digits, plain between 1e-3 and 1e5."""
     if value == 0:
         return "0"
-    places = digits - 1 - floor(log10(abs(value)))
-    value = round(value, places)
+    text = f"{value:.{digits - 1}e}"
+    value = float(text)
     if not 1e-3 <= abs(value) < 1e5:
-        return f"{value:.{digits - 1}e}"
-    return f"{value:.{max(places, 0)}f}"
+        return text
+    return f"{value:.{max(digits - 1 - floor(log10(abs(value))), 0)}f}"
 
 
 def show(value: float, unit: str, digits: int = 3) -> str:
