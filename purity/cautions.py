@@ -55,14 +55,10 @@ def cautions(scenario: Scenario, library: Library) -> tuple[str, ...]:
     tuple of str
         In the order of the rules.
     """
-    called = {
-        text
-        for step in scenario.steps
-        for choice in step.choices
-        for text in for_choice(choice, scenario.lot, library)
-    }
-    ordered = [_text(rule) for rule in library.rows("hazards")]
-    return (GENERAL, *dict.fromkeys(text for text in ordered if text in called))
+    choices = [choice for step in scenario.steps for choice in step.choices]
+    said = [_called(choice, scenario.lot, library) for choice in choices]
+    rules = range(len(library.rows("hazards")))
+    return (GENERAL, *dict.fromkeys(texts[rule] for rule in rules for texts in said if rule in texts))
 
 
 def for_choice(choice: Choice, lot: Lot, library: Library) -> tuple[str, ...]:
@@ -78,10 +74,7 @@ def for_choice(choice: Choice, lot: Lot, library: Library) -> tuple[str, ...]:
     -------
     tuple of str
     """
-    seen = features(choice, lot, library)
-    hottest = max((given.high for _, given in choice.profile), default=0.0)
-    rules = library.rows("hazards")
-    return tuple(dict.fromkeys(_text(rule) for rule in rules if _speaks(rule, seen, hottest)))
+    return tuple(dict.fromkeys(_called(choice, lot, library).values()))
 
 
 def features(choice: Choice, lot: Lot, library: Library) -> Features:
@@ -95,15 +88,34 @@ def features(choice: Choice, lot: Lot, library: Library) -> Features:
     materials = _materials(choice, library)
     return {
         "hosts": frozenset({lot.host}),
-        "elements": frozenset(_elements(choice, lot)),
+        "elements": frozenset(_elements(choice, lot, library)),
         "gases": frozenset(_gases(choice)),
-        "materials": frozenset(_material_words(choice, materials)),
+        "materials": frozenset({*_material_words(choice, materials), *_by_limit(choice, materials)}),
         "processes": frozenset({choice.process, *((choice.stirring,) if choice.stirring else ())}),
     }
 
 
-def _text(rule: Record) -> str:
-    return f"{rule.words['caution']} {rule.words['consult']}"
+def _called(choice: Choice, lot: Lot, library: Library) -> dict[int, str]:
+    """Return the texts of the rules that a choice calls for, by the place of the rule in the table."""
+    seen = features(choice, lot, library)
+    hottest = _hottest(choice)
+    bodies = _by_limit(choice, _materials(choice, library))
+    return {
+        place: _text(rule, bodies)
+        for place, rule in enumerate(library.rows("hazards"))
+        if _speaks(rule, seen, hottest)
+    }
+
+
+def _text(rule: Record, bodies: Mapping[str, list[str]]) -> str:
+    """Return caution and advice; a rule on service limits names the bodies first."""
+    named = dict.fromkeys(bodies.get(rule.words["materials"], ()))
+    start = f"{', '.join(named)}: " if named else ""
+    return f"{start}{rule.words['caution']} {rule.words['consult']}"
+
+
+def _hottest(choice: Choice) -> float:
+    return max((given.high for _, given in choice.profile), default=0.0)
 
 
 def _speaks(rule: Record, seen: Features, hottest: float) -> bool:
@@ -117,14 +129,17 @@ def _met(cell: str, words: frozenset[str]) -> bool:
     return not cell or any(set(name.split(" + ")) <= words for name in cell.split("|"))
 
 
-def _elements(choice: Choice, lot: Lot) -> Iterable[str]:
+def _elements(choice: Choice, lot: Lot, library: Library) -> Iterable[str]:
     yield lot.host
     for element, certified in lot.certificate.items():
         if certified.given.high >= COUNTS_FROM:
             yield element
     last = choice.furnace.last_charge if choice.furnace else None
     if last:
-        yield from re.findall(r"\b[A-Z][a-z]?(?=\b|\d)", last)
+        words = {word for found in re.findall(r"[A-Za-z]+", last) for word in (found, found.casefold())}
+        for row in library.rows("elements"):
+            if {row.words["element"], row.words["name"].casefold()} & words:
+                yield row.words["element"]
 
 
 def _atmospheres(choice: Choice) -> list[Atmosphere]:
@@ -166,21 +181,26 @@ def _materials(choice: Choice, library: Library) -> list[tuple[str, Material]]:
 
 
 def _material_words(choice: Choice, materials: list[tuple[str, Material]]) -> Iterable[str]:
-    condition = _condition(choice)
-    hottest = max((given.high for _, given in choice.profile), default=0.0)
-    for role, material in materials:
+    for _, material in materials:
         yield from (formula for formula, share in material.phases.items() if share >= PHASE_FROM)
         yield material.name
         yield material.origin.partition(":")[2]
-        if role in _HOT_ROLES:
-            limit = material.service.get(condition)
-            if limit is None:
-                yield "no service limit known"
-            elif hottest > limit:
-                yield "above its service limit"
     for contact in choice.contacts:
         if isinstance(contact.body, Package):
             yield from (contact.body.name, contact.body.barrier)
+
+
+def _by_limit(choice: Choice, materials: list[tuple[str, Material]]) -> dict[str, list[str]]:
+    """Return the bodies whose service temperature is passed or unknown, by the word of the rules."""
+    condition = _condition(choice)
+    found: dict[str, list[str]] = {}
+    for role, material in materials:
+        limit = material.service.get(condition)
+        if role not in _HOT_ROLES or (limit is not None and _hottest(choice) <= limit):
+            continue
+        word = "no service limit known" if limit is None else "above its service limit"
+        found.setdefault(word, []).append(material.name)
+    return found
 
 
 def _condition(choice: Choice) -> str:
