@@ -136,7 +136,7 @@ def _elements(choice: Choice, lot: Lot, library: Library) -> Iterable[str]:
             yield element
     last = choice.furnace.last_charge if choice.furnace else None
     if last:
-        words = {word for found in re.findall(r"[A-Za-z]+", last) for word in (found, found.casefold())}
+        words = {word for found in re.findall(r"\b[A-Za-z]+\b", last) for word in (found, found.casefold())}
         for row in library.rows("elements"):
             if {row.words["element"], row.words["name"].casefold()} & words:
                 yield row.words["element"]
