@@ -110,9 +110,8 @@ class _Solved:
 
 
 def _numbers(some: Problem, base: components.Basis, lam: Array, size: Array) -> newton.Draws:
-    b = components.combine(some.fed, base.inputs, base.divisor)
-    lam = base.members @ lam
-    return {"g": some.g, "b": b, "weight": some.weight, "volume": some.volume, "lam": lam, "size": size}
+    fixed = newton.balances(some.g, some.volume, some.fed, some.weight, base)
+    return {**fixed, "lam": base.members @ lam, "size": size}
 
 
 def _solve(problem: Problem, warm: Equilibrium | None) -> _Solved:
@@ -280,6 +279,23 @@ def _assemble(
     )
 
 
+def broadcast(
+    g: Array, amounts: Array, held: Mapping[str, Array] | None, gas_volume: Array | None
+) -> tuple[Array, Array, dict[str, Array], Array | None]:
+    """Bring every input to the same number of draws; parameters as for :func:`equilibrium`."""
+    g, amounts = np.atleast_2d(np.asarray(g, float)), np.atleast_2d(np.asarray(amounts, float))
+    levels = {e: np.atleast_1d(np.asarray(v, float)) for e, v in (held or {}).items()}
+    room = None if gas_volume is None else np.atleast_1d(np.asarray(gas_volume, float))
+    sizes = [g.shape[1], amounts.shape[1], *(len(v) for v in levels.values())]
+    count = max(sizes if room is None else [*sizes, len(room)])
+    return (
+        np.broadcast_to(g, (len(g), count)),
+        np.broadcast_to(amounts, (len(amounts), count)),
+        {e: np.broadcast_to(v, (count,)) for e, v in levels.items()},
+        None if room is None else np.broadcast_to(room, (count,)),
+    )
+
+
 def equilibrium(
     system: System,
     g: Array,
@@ -325,14 +341,7 @@ def equilibrium(
     assemblage in component substances (W. R. Smith and R. W. Missen, Chemical Reaction Equilibrium
     Analysis, 1982). A missing species or phase is not seen by any certificate.
     """
-    g, amounts = np.atleast_2d(np.asarray(g, float)), np.atleast_2d(np.asarray(amounts, float))
-    levels = {e: np.atleast_1d(np.asarray(v, float)) for e, v in (held or {}).items()}
-    room = None if gas_volume is None else np.atleast_1d(np.asarray(gas_volume, float))
-    sizes = [g.shape[1], amounts.shape[1], *(len(v) for v in levels.values())]
-    count = max(sizes if room is None else [*sizes, len(room)])
-    g, amounts = np.broadcast_to(g, (len(g), count)), np.broadcast_to(amounts, (len(amounts), count))
-    levels = {e: np.broadcast_to(v, (count,)) for e, v in levels.items()}
-    room = None if room is None else np.broadcast_to(room, (count,))
+    g, amounts, levels, room = broadcast(g, amounts, held, gas_volume)
     problem, own = reduce(system, g, amounts, levels, room, inputs)
     closed = np.array([room is None or name != GAS for name in system.phases])
     out = _Solved.none(problem)

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.driving_force.components import Basis, Layout
+from purity.driving_force.components import Basis, Layout, combine
 from purity.driving_force.interior import mix
 
 Array = NDArray[np.float64]
@@ -48,7 +48,42 @@ class Polished:
     rounding: Array
 
 
-def _evaluate(layout: Layout, base: Basis, d: Draws, active: Mask) -> Draws:
+def balances(g: Array, volume: Array, fed: Array, weight: Array, base: Basis) -> Draws:
+    """Collect what does not change while an equilibrium is refined.
+
+    Parameters
+    ----------
+    g : (S, N) array
+    volume : (N,) array
+    fed : (J, N) array
+        mol of each input.
+    weight : (P, N) array
+    base : Basis
+
+    Returns
+    -------
+    mapping
+        With the amounts of the components under ``b``.
+    """
+    return {"g": g, "volume": volume, "weight": weight, "b": combine(fed, base.inputs, base.divisor)}
+
+
+def evaluate(layout: Layout, base: Basis, d: Draws, active: Mask) -> Draws:
+    """Compute activities, amounts, saturations and balances at a point.
+
+    Parameters
+    ----------
+    layout, base
+    d : mapping
+        What :func:`balances` gives, ``lam`` and ``size``.
+    active : (P, N) bool array
+
+    Returns
+    -------
+    mapping
+        ``u`` ln activity, ``x`` composition, ``n`` amounts, ``f`` ln saturation of each phase, ``plus`` and
+        ``minus`` sums of each balance and ``e`` the logarithm of their ratio.
+    """
     a, k = base.species, layout.closed
     u: Array = a @ d["lam"] - d["g"]
     total, x = mix(layout, u)
@@ -63,8 +98,8 @@ def _evaluate(layout: Layout, base: Basis, d: Draws, active: Mask) -> Draws:
     return {"u": u, "x": x, "n": n, "f": total, "plus": plus, "minus": minus, "e": np.log(plus / minus)}
 
 
-def _slots(active: Mask) -> tuple[NDArray[np.intp], Mask]:
-    """Active phases of each draw, listed first: positions (A, N) and which of them count."""
+def slots(active: Mask) -> tuple[NDArray[np.intp], Mask]:
+    """List the active phases of each draw first: positions (A, N), and which of them count."""
     width = int(active.sum(axis=0).max(initial=0))
     index = np.argsort(~active, axis=0, kind="stable")[:width]
     return index, np.take_along_axis(active, index, axis=0)
@@ -98,7 +133,7 @@ def jacobian(layout: Layout, base: Basis, point: Draws, active: Mask) -> tuple[A
         mean[p] = a[i:j].T @ x[i:j]
         flow[p] = (up[i:j].T @ n[i:j]) / point["plus"] - (down[i:j].T @ n[i:j]) / point["minus"]
         square -= flow[p][:, None] * mean[p][None, :]
-    index, valid = _slots(active)
+    index, valid = slots(active)
     rows = len(index)
     out: Array = np.zeros((draws, c + rows, c + rows))
     out[:, :c, :c] = square.transpose(2, 0, 1)
@@ -154,7 +189,7 @@ def _rounding(matrix: Array, base: Basis) -> Array:
 def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> Mask:
     """One Newton step in place; returns the phases that are left."""
     matrix, _ = jacobian(layout, base, point, active)
-    index, valid = _slots(active)
+    index, valid = slots(active)
     c = len(d["lam"])
     f: Array = np.where(valid, np.take_along_axis(point["f"], index, axis=0), 0.0)
     right: Array = -np.concatenate([point["e"], f]).T[:, :, None]
@@ -200,8 +235,8 @@ def polish(
     layout : Layout
     base : Basis
     draws : mapping
-        ``g`` (S, N), ``b`` (C, N) mol of each component, ``weight`` and ``size`` (P, N), ``volume`` (N,),
-        ``lam`` (C, N) first guess of the component potentials.
+        What :func:`balances` gives, and first guesses of the component potentials ``lam`` (C, N) and of the
+        amounts of the phases ``size`` (P, N).
     active : (P, N) bool array
         First guess of the stable phases.
     limit : int
@@ -222,7 +257,7 @@ def polish(
     u, n = np.zeros_like(d["g"]), np.zeros_like(d["g"])
     done, rounding = np.zeros(count, dtype=bool), np.zeros(count)
     for _ in range(limit):
-        point = _evaluate(layout, base, d, now)
+        point = evaluate(layout, base, d, now)
         settled, lost = _measure(d, point, now)
         before = now.copy()
         good = _admit(d, point, now, settled)
@@ -241,6 +276,6 @@ def polish(
             d, now = {key: value[..., keep] for key, value in d.items()}, now[:, keep]
             point = {key: value[..., keep] for key, value in point.items()}
         if (now != before).any():
-            point = _evaluate(layout, base, d, now)
+            point = evaluate(layout, base, d, now)
         now = _step(layout, base, d, point, now)
     return Polished(lam, u, n, last, done, rounding)

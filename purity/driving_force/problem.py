@@ -63,8 +63,8 @@ class Problem:
         Inputs likewise.
     species, phases, elements, columns : integer arrays
         Positions in the system; `columns` are the independent ones among `elements`.
-    absent : integer array
-        Elements that no draw has.
+    absent, used : integer arrays
+        Elements that no draw has; inputs that count.
     basis : Basis
         Component substances: the inputs, the largest first.
     missing : (E, N) bool array
@@ -90,6 +90,7 @@ class Problem:
     elements: NDArray[np.intp]
     columns: NDArray[np.intp]
     absent: NDArray[np.intp]
+    used: NDArray[np.intp]
     basis: components.Basis
     missing: Mask
     g: Array
@@ -199,6 +200,7 @@ def reduce(
         elements,
         np.array(columns, dtype=np.intp),
         np.flatnonzero(absent),
+        used,
         base,
         matrix.T @ amounts[used] <= 0.0,
         _lifted(layout, own[species]),

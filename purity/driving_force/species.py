@@ -155,7 +155,11 @@ def _name(library: Library, formula: str, state: str) -> str:
 
 
 def _why(record: Found) -> str:
-    kind = {"activity": "activity coefficient", "sieverts": "Sieverts constant"}[record.record.table]
+    kind = {
+        "activity": "activity coefficient",
+        "sieverts": "Sieverts constant",
+        "solubility": "measured saturation",
+    }[record.record.table]
     return f"dissolves: {kind} ({record.how}, {record.record.source})"
 
 

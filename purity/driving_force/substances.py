@@ -5,14 +5,14 @@ Pure substances are in :mod:`purity.driving_force.pure`; their names can be had 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from math import log
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from purity.constants import ATM, P0, R
+from purity.constants import ATM, DILUTE, P0, R
 from purity.database import Found, Gap, Library, Record, ln_value, outside, parameters
 from purity.draws import Draws, normal
 from purity.driving_force import estimate
@@ -70,21 +70,27 @@ class Measured:
     Parameters
     ----------
     ln_x : (K, N) or (N,) array
-        ln of the mole fraction (per mole of host) at saturation.
+        ln of the content (mole per mole of host) at saturation.
+    median : array
+        Its median.
     sigma : array
         One standard deviation of ln x that comes from the measurement and its distance in temperature.
     deviation : array
         Measured less computed ln x at the median, carried to T; 0 where nothing could be computed.
     conflict : bool array
         The two differ by more than two standard deviations at the nearest measurement.
+    wins : bool array
+        The measurement is to be used: on conflict, and in the place of an estimate.
     found : Found
         The nearest record with the others of its quantity.
     """
 
     ln_x: Array
+    median: Array
     sigma: Array
     deviation: Array
     conflict: NDArray[np.bool_]
+    wins: NDArray[np.bool_]
     found: Found
 
 
@@ -104,7 +110,8 @@ def solute(library: Library, host: str, phase: str, element: str, T: ArrayLike, 
 
     From a record of activity, G of the pure reference + RT ln gamma; from a record of the Sieverts
     constant, half the molecule at 1 bar - RT ln x(1 bar); else the estimate of
-    :mod:`purity.driving_force.estimate`, marked so.
+    :mod:`purity.driving_force.estimate`, marked so. A measured dilute saturation with the pure solid,
+    at which its activity is 1, takes the place of an estimate and of what it contradicts by two sigma.
 
     Parameters
     ----------
@@ -119,6 +126,30 @@ def solute(library: Library, host: str, phase: str, element: str, T: ArrayLike, 
     Energy or Gap
         J/mol: mu = value + RT ln x, x in moles per mole of host.
     """
+    if element == host:
+        return host_energy(library, host, phase, T, draws)
+    computed = _solute(library, host, phase, element, T, draws)
+    measured = measured_ceiling(library, host, phase, element, element, T, draws)
+    if isinstance(measured, Gap):
+        return computed
+    wins = measured.wins & (measured.median <= log(DILUTE))
+    pure = gibbs_energy(library, element, "solid", T, draws)
+    if isinstance(pure, Gap) or not wins.any() or (isinstance(computed, Gap) and not wins.all()):
+        return computed
+    value = pure.value - R * np.asarray(T, dtype=float) * measured.ln_x
+    if isinstance(computed, Gap):
+        return Energy(value, (measured.found, *pure.found), pure.outside)
+    return Energy(
+        np.where(wins, value, computed.value),
+        (measured.found, *combine([(1.0, pure), (1.0, computed)]).found),
+        np.where(wins, pure.outside, computed.outside),
+    )
+
+
+def _solute(
+    library: Library, host: str, phase: str, element: str, T: ArrayLike, draws: Draws
+) -> Energy | Gap:
+    """As :func:`solute`, without a look at measured saturations."""
     if element == host:
         return host_energy(library, host, phase, T, draws)
     record = solute_record(library, host, phase, element)
@@ -206,14 +237,21 @@ def ln_dissolution(
 
 
 def _ln_computed(
-    library: Library, host: str, phase: str, formula: str, state: str, T: ArrayLike, draws: Draws
+    library: Library,
+    host: str,
+    phase: str,
+    formula: str,
+    state: str,
+    T: ArrayLike,
+    draws: Draws,
+    dissolve: Callable[..., Energy | Gap] = solute,
 ) -> Energy | Gap:
     substance = gibbs_energy(library, formula, state, T, draws)
     if isinstance(substance, Gap):
         return substance
     parts: list[tuple[float, Energy]] = [(1.0, substance)]
     for element, count in atoms(formula).items():
-        dissolved = solute(library, host, phase, element, T, draws)
+        dissolved = dissolve(library, host, phase, element, T, draws)
         if isinstance(dissolved, Gap):
             return dissolved
         parts.append((-count, dissolved))
@@ -264,11 +302,16 @@ def measured_ceiling(
     sigma = np.hypot(spread[nearest], SLOPE * np.abs(1.0 / t - 1.0 / at[nearest]))
     deviation = np.interp(1.0 / t, 1.0 / at[::-1], off[::-1])
     value = base + deviation + sigma * normal(draws, points[0].quantity)[0]
+    conflict = np.broadcast_to((doubt & ~(bound & (off > 0)))[nearest], value.shape)
+    record = solute_record(library, host, phase, element)
+    estimated = isinstance(record, Gap) or record.record.origin == "estimate"
     return Measured(
         value,
+        np.broadcast_to(base + deviation, value.shape),
         np.broadcast_to(sigma, value.shape),
         np.broadcast_to(deviation if np.ndim(base) else np.zeros(()), value.shape),
-        np.broadcast_to((doubt & ~(bound & (off > 0)))[nearest], value.shape),
+        conflict,
+        conflict | estimated,
         found(library, points[int(np.ravel(nearest)[0])]),
     )
 
@@ -289,12 +332,15 @@ def _own(
     nothing = np.zeros(()), np.zeros(at.shape), np.zeros(at.shape)
     if set(counts) - {host} != {element}:
         return nothing
-    here = _ln_computed(library, host, phase, formula, "solid", t, Draws.nominal())
-    there = _ln_computed(library, host, phase, formula, "solid", at[:, np.newaxis], Draws.nominal())
-    if isinstance(here, Gap) or isinstance(there, Gap):
+    dissolve = _solute if formula == element else solute
+
+    def computed(T: Array, draws: Draws) -> Energy | Gap:
+        return _ln_computed(library, host, phase, formula, "solid", T, draws, dissolve)
+
+    here, there = computed(t, Draws.nominal()), computed(at[:, np.newaxis], Draws.nominal())
+    scatter = computed(at[:, np.newaxis], SCATTER)
+    if isinstance(here, Gap) or isinstance(there, Gap) or isinstance(scatter, Gap):
         return nothing
-    scatter = _ln_computed(library, host, phase, formula, "solid", at[:, np.newaxis], SCATTER)
-    assert isinstance(scatter, Energy)
     count = counts[element]
     return here.value / count, there.value[:, 0] / count, np.std(scatter.value, axis=-1) / count
 
@@ -308,7 +354,7 @@ def reconcile(
     draws: Draws,
     computed: Energy | Gap,
 ) -> Energy | Gap:
-    """Put the measured saturation in the place of a computed ln K where they differ by two sigma or more.
+    """Put a measured saturation in the place of a computed ln K that is an estimate or two sigma off.
 
     Parameters
     ----------
@@ -335,10 +381,10 @@ def reconcile(
     value = counts[solutes[0]] * measured.ln_x
     if isinstance(computed, Gap):
         return Energy(value, (measured.found,), measured.sigma > 2.0 * measured.found.record.spread)
-    if not measured.conflict.any():
+    if not measured.wins.any():
         return computed
     return Energy(
-        np.where(measured.conflict, value, computed.value),
+        np.where(measured.wins, value, computed.value),
         (measured.found, *computed.found),
         np.broadcast_to(computed.outside, value.shape),
     )
