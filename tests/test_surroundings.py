@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections import defaultdict
 from math import exp, log, log1p, sqrt
 
+import numpy as np
 import pytest
 
 from purity.constants import ATM
 from purity.database import Gap, Library, Record, load, verify
+from purity.kinetics.films import LAWS
 from purity.quantities import frost_point_pressure
 from purity.scenario import Atmosphere, Material
 
@@ -35,6 +37,14 @@ def test_every_row_keeps_the_rules() -> None:
     released = "differs from the file"
     faults = [f for f in verify() if f.key.partition(".csv")[0] in OURS and released not in f.text]
     assert not faults
+
+
+def test_no_recalled_row_says_that_it_was_looked_up(library: Library) -> None:
+    unseen = {key for key, source in library.sources.items() if source["origin"] in {"memory", "not opened"}}
+    assert {"memory", "practice"} <= unseen
+    for table in OURS[:-1]:
+        for record in library.tables[table]:
+            assert record.origin != "looked-up" or record.source not in unseen, record.quantity
 
 
 # Walls
@@ -242,6 +252,17 @@ def test_every_film_follows_a_known_law(library: Library) -> None:
         assert 0.0 < day <= month * (1 + 1e-12), record.quantity
         assert day < 1e4 or record.T_min > 500, record.quantity
         assert record.fields["density_kg_per_m3"] > 2000
+
+
+def test_the_head_of_the_table_says_what_is_computed(library: Library) -> None:
+    for record in library.tables["films"]:
+        if "Q_kJ_per_mol" in record.fields:
+            continue
+        given = [record.fields[name] for name in ("p1", "p2", "p3") if name in record.fields]
+        parameters = tuple(np.array([value]) for value in given)
+        for t in (3600.0, DAY, YEAR):
+            grown = LAWS[record.words["law"]](np.zeros(1), parameters, np.array([t]))
+            assert grown[0] * 1e9 == pytest.approx(thickness(record, t), rel=1e-4), record.quantity
 
 
 def test_copper_in_a_room(library: Library) -> None:
