@@ -12,6 +12,7 @@ PACKAGE = ROOT / "purity"
 
 NUMBERS = {"errors", "constants"}
 KINETICS_BASE = {"kinetics.exposure", "kinetics.arrhenius", "kinetics.schedule", "kinetics.transfer"}
+BATH = {f"kinetics.{n}" for n in ("stage", "flux_newton", "arrow", "passive")}
 DRIVING_FORCE = {
     f"driving_force.{n}" for n in ("solution", "substances", "species", "equilibrium", "estimate", "sensitivity", "nonideal")
 }
@@ -56,7 +57,12 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.passage": NUMBERS
     | KINETICS_BASE
     | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.flux_newton", "kinetics.pieces"},
-    "kinetics.bath": NUMBERS | KINETICS_BASE | {"scenario"},
+    "kinetics.stage": NUMBERS | KINETICS_BASE,
+    "kinetics.flux_newton": NUMBERS | KINETICS_BASE | {"kinetics.stage"},
+    "kinetics.arrow": NUMBERS | KINETICS_BASE | {"kinetics.stage", "kinetics.flux_newton"},
+    "kinetics.passive": NUMBERS | KINETICS_BASE | {"kinetics.stage"},
+    "kinetics.sdirk": NUMBERS | KINETICS_BASE | BATH,
+    "kinetics.bath": NUMBERS | KINETICS_BASE | BATH | {"kinetics.sdirk", "scenario"},
     "kinetics.body": NUMBERS
     | KINETICS_BASE
     | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.pieces", "kinetics.passage"},
