@@ -60,9 +60,11 @@ def _counts(formula: str) -> tuple[tuple[str, float], ...]:
             stack[-1][element] += float(number or 1)
         elif opening:
             stack.append(defaultdict(float))
-        elif len(stack) > 1:
-            inner = stack.pop()
-            for name, count in inner.items():
+        elif len(stack) == 1:
+            end = 0
+            break
+        else:
+            for name, count in stack.pop().items():
                 stack[-1][name] += count * float(times or 1)
     if end != len(formula) or len(stack) != 1 or not counts:
         raise ValueError(f"{formula!r} is not a chemical formula")

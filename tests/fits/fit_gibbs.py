@@ -71,6 +71,12 @@ def basis(T: Array) -> Array:
     )
 
 
+def heat_capacity(answer: Array, T: Array) -> Array:
+    """Cp = a + bT + c/T^2 + dT^2."""
+    a, b, c, d = answer[2:]
+    return np.asarray(a + b * T + c / T**2 + d * T**2)
+
+
 @lru_cache(maxsize=1)
 def nasa() -> Mapping[str, Any]:
     """Species of the NASA collection by name."""
@@ -130,7 +136,7 @@ def solve(T: Array, G: Array, pin: Array) -> tuple[Array, float]:
     """Six coefficients and the worst error; no more terms of Cp than the table asks for."""
     columns = basis(T)
     target = G - columns[:, :2] @ pin if len(pin) else G
-    answer, error = np.zeros(6), np.inf
+    best, least = np.zeros(6), np.inf
     for terms in (PINNED if len(pin) else FREE)[: max(1, len(T) - 3)]:
         free = list(terms)
         scale = np.abs(columns[:, free]).max(axis=0)
@@ -138,9 +144,11 @@ def solve(T: Array, G: Array, pin: Array) -> tuple[Array, float]:
         answer[: len(pin)] = pin
         answer[free] = np.linalg.lstsq(columns[:, free] / scale, target, rcond=1e-13)[0] / scale
         error = float(np.abs(columns @ answer - G).max())
-        if error <= ENOUGH:
+        if error < least and (least == np.inf or heat_capacity(answer, T).min() > 0):
+            best, least = answer, error
+        if least <= ENOUGH:
             break
-    return answer, error
+    return best, least
 
 
 def pieces(T: Array, G: Array, pin: Array) -> Iterator[tuple[Array, Array, float]]:
