@@ -92,12 +92,15 @@ class Library:
         blake2b of every table in use, the user's own included.
     prefer : tuple of str
         Sources that go before all ranks.
+    withdrawn : frozenset of str
+        Quantities that a user's own tables take out and put nothing in place of.
     """
 
     tables: Mapping[str, tuple[Record, ...]]
     sources: Mapping[str, Mapping[str, str]]
     data_hash: str
     prefer: tuple[str, ...] = ()
+    withdrawn: frozenset[str] = frozenset()
     _index: Mapping[str, tuple[Record, ...]] = field(default_factory=dict, repr=False, compare=False)
 
     def find(self, table: str, **key: str) -> Found | Gap:
@@ -237,16 +240,19 @@ def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Lib
     if faults:
         raise DataError(str(DATA), faults)
     digest = blake2b("".join(f"{n}{h}" for n, h in file_hashes(DATA).items()).encode(), digest_size=16)
+    withdrawn: frozenset[str] = frozenset()
     if overlay is not None:
         folder = Path(overlay)
         faults = check(folder)
         if faults:
             raise DataError(str(folder), faults)
         own, own_sources, _ = read_folder(folder, yours=True)
+        put = {record.quantity for rows in own.values() for record in rows if record.rank > 0}
+        withdrawn = frozenset(r.quantity for rows in own.values() for r in rows if r.rank == 0) - put
         tables = {name: _laid_over(tables.get(name, ()), own.get(name, ())) for name in TABLES}
         sources = {**sources, **own_sources}
         digest.update("".join(f"{n}{h}" for n, h in file_hashes(folder).items()).encode())
-    return _library(tables, sources, digest.hexdigest(), prefer)
+    return _library(tables, sources, digest.hexdigest(), prefer, withdrawn)
 
 
 def _laid_over(base: Iterable[Record], own: Iterable[Record]) -> tuple[Record, ...]:
@@ -261,6 +267,7 @@ def _library(
     sources: Mapping[str, Mapping[str, str]],
     data_hash: str,
     prefer: tuple[str, ...],
+    withdrawn: frozenset[str] = frozenset(),
 ) -> Library:
     chosen = _preferences(tables, sources, prefer)
     ordered: dict[str, tuple[Record, ...]] = {}
@@ -274,7 +281,8 @@ def _library(
         )
         for record in ordered[name]:
             index.setdefault(record.quantity, []).append(record)
-    return Library(ordered, sources, data_hash, prefer, {name: tuple(rows) for name, rows in index.items()})
+    rivals = {name: tuple(rows) for name, rows in index.items()}
+    return Library(ordered, sources, data_hash, prefer, withdrawn, rivals)
 
 
 def _preferred(record: Record, chosen: set[str]) -> bool:
