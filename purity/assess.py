@@ -20,10 +20,10 @@ from purity.cautions import cautions, for_choice
 from purity.constants import GAS_FORMERS
 from purity.database import Found, Gap, Library
 from purity.draws import Draws, sample
-from purity.driving_force.substances import atoms
+from purity.driving_force.pure import atoms
 from purity.errors import ScenarioError
 from purity.kinetics.advance import State
-from purity.lines import Column, block, columns, counts, group_columns, group_line, line, to_ppm
+from purity.lines import Column, block, columns, counts, from_nothing, group_columns, group_line, line, to_ppm
 from purity.passing import Passed, pass_step, total
 from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StepResult
 from purity.risk import Standing, load, standings
@@ -196,16 +196,16 @@ class _Weighed:
 
 
 def _weigh(passed: Passed, lot: Lot) -> _Weighed:
+    """Weigh every limited element; one without a certificate by what it gains alone, the least it can hold."""
     found = columns(passed, lot)
-    unknown = {element for element in found if passed.gaps.get(element)}
-    rows = [c for c in (*found.values(), *group_columns(found, lot)) if c.limit is not None and c.certified]
-    rows = [c for c in rows if c.element not in unknown]
+    singles = [
+        c if c.certified else from_nothing(c) for c in found.values() if not passed.gaps.get(c.element)
+    ]
+    rows = [c for c in (*singles, *group_columns(found, lot)) if c.limit is not None]
     n = passed.setting.draws.n
     over = np.array([c.end > (c.limit or 0.0) for c in rows]).reshape(len(rows), n)
-    loads = np.array([load(float(np.median(c.start)), c.end, c.limit or 0.0) for c in rows]).reshape(
-        len(rows), n
-    )
-    return _Weighed(tuple(c.element for c in rows), over, loads)
+    loads = np.array([load(float(np.median(c.start)), c.end, c.limit or 0.0) for c in rows])
+    return _Weighed(tuple(c.element for c in rows), over, loads.reshape(len(rows), n))
 
 
 def _standing_state(passed: Passed, lot: Lot) -> tuple[str, tuple[int, int]]:

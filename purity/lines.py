@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -70,7 +70,7 @@ def columns(passed: Passed, lot: Lot) -> dict[str, Column]:
 def counts(lot: Lot) -> tuple[str, ...]:
     """Return the elements that a choice must be assessed for: certified or limited ones."""
     grouped = {element for members in lot.groups.values() for element in members}
-    return tuple(sorted({*lot.certificate, *lot.limits, *grouped}))
+    return tuple(sorted({*lot.certificate, *lot.limits, *grouped} - set(lot.groups)))
 
 
 def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
@@ -203,16 +203,24 @@ def _series(passed: Passed, element: str, scale: float) -> tuple[tuple[float, Ba
     return tuple((float(when), band(row * scale)) for when, row in zip(t, contents, strict=True))
 
 
+def from_nothing(column: Column) -> Column:
+    """Return an uncertified element as the least it can hold: what it gains, from a start of zero."""
+    return replace(column, start=np.zeros_like(column.start), end=column.end - column.start)
+
+
 def group_columns(found: Mapping[str, Column], lot: Lot) -> list[Column]:
-    """Return sums with a limit of their own: groups, and all metals together (C N O H S left out)."""
-    rows = []
+    """Return sums with a limit of their own: groups, and all metals together (C N O H S left out).
+
+    A member without a certificate counts with what it gains.
+    """
     sums = dict(lot.groups)
     limits = {name: lot.limits[name] for name in sums if name in lot.limits}
     if lot.metals_limit is not None:
-        sums["metals"] = tuple(e for e in lot.certificate if block(e) == "metals")
+        sums["metals"] = tuple(e for e in found if block(e) == "metals")
         limits["metals"] = lot.metals_limit
+    rows = []
     for name, members in sums.items():
-        present = [found[e] for e in members if e in found]
+        present = [c if c.certified else from_nothing(c) for c in (found[e] for e in members if e in found)]
         if name not in limits or not present:
             continue
         start = np.sum([c.start for c in present], axis=0)
@@ -225,23 +233,24 @@ def group_line(column: Column, blocks: int) -> Line:
     """Return the line of a sum with a limit of its own."""
     start, end = band(column.start), band(column.end)
     limit = column.limit
-    assert limit is not None
-    over = chance(column.end, limit, blocks) if column.certified else (None, None)
+    if limit is None:
+        raise ValueError(f"the sum {column.element} has no limit")
+    over, error = chance(column.end, limit, blocks)
     return Line(
         impurity=column.element,
         block="metals",
-        start=start if column.certified else None,
-        end=end if column.certified else None,
+        start=start,
+        end=end,
         dissolved=None,
         pickup=band(column.end - column.start),
         limit=limit,
-        margin=margin(end.high, limit) if column.certified else None,
+        margin=margin(end.high, limit),
         worst=None,
         detection=None,
-        spent=spent(start.median, end.median, limit) if column.certified else None,
-        word=word(start.median, end.median, limit) if column.certified else None,
-        chance_over=over[0],
-        chance_error=over[1],
+        spent=spent(start.median, end.median, limit),
+        word=word(start.median, end.median, limit),
+        chance_over=over,
+        chance_error=error,
         ceiling=None,
         driving_force=None,
         held_back_by=None,
@@ -251,5 +260,5 @@ def group_line(column: Column, blocks: int) -> Line:
         records=(),
         quality=None,
         extrapolated=False,
-        gap=None if column.certified else "a member of this sum is not certified",
+        gap=None if column.certified else "members without a certificate count with what they gain",
     )

@@ -1,9 +1,4 @@
-"""One choice of one step: the lot goes in as it is, and comes out as kinetics leaves it.
-
-Elements that no carrier and no skin ties together are moved apart from each other, so that a record
-changes only the elements it has to do with, to the last bit. Compounds that could form are watched:
-where the metal ends beyond the saturation of one, the step is redone with that compound as a skin.
-"""
+"""One choice of one step: the lot goes in as it is, and comes out as kinetics leaves it."""
 
 from __future__ import annotations
 
@@ -13,28 +8,22 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.contacts import expose, products
+from purity.contacts import expose
 from purity.contacts.gas import host_evaporation
-from purity.contacts.setting import Exposed, Setting, diffusivity
+from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
-from purity.kinetics.advance import HELD_BACK_BY, Host, Pickup, State, advance
+from purity.kinetics.advance import HELD_BACK_BY, State
 from purity.kinetics.arrhenius import curve_integral
-from purity.kinetics.exposure import Curve, Exposure, Skin
-from purity.kinetics.groups import restrict, tied
+from purity.kinetics.exposure import Curve
 from purity.kinetics.schedule import Schedule, segments
+from purity.moving import Part, move, total
 from purity.scenario import Choice, Lot
 
 Array = NDArray[np.float64]
 
 #: Knots of temperature in a step, for curves.
 KNOTS = 6
-#: Nodes a segment of the bath and body integrators in the main job.
-NODES = 16
-#: ln of saturation beyond which a compound is taken to form.
-BEYOND = 1e-6
-#: Most rounds in which compounds that turn out to form are added.
-ROUNDS = 5
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,12 +74,6 @@ class Passed:
     hot: Array
     series: Mapping[str, tuple[Array, Array]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
-
-
-def total(state: State) -> Array:
-    """Return the whole content, dissolved, suspended and at the surface, (I, N) mol per mol of host."""
-    x = state.x + state.suspended
-    return x if state.surface is None else x + state.surface
 
 
 def make_setting(
@@ -176,7 +159,7 @@ def pass_step(
     for c, one in enumerate(exposed):
         if one.gain is not None:
             ledger[c] += one.gain
-    parts = _move(entered, setting, schedule, exposed, history)
+    parts = move(entered, setting, schedule, exposed, history)
     return _gather(state, entered, setting, schedule, exposed, ledger, parts)
 
 
@@ -190,90 +173,6 @@ def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:
     if setting.liquid:
         return State(state.x + surface + brought, state.suspended)
     return replace(state, surface=surface + brought)
-
-
-@dataclass(frozen=True, slots=True)
-class _Part:
-    """One group of tied elements and what became of it."""
-
-    index: NDArray[np.int64]
-    rows: tuple[int, ...]
-    pickup: Pickup
-    skins: tuple[tuple[Skin, tuple[Found, ...]], ...]
-
-
-def _move(
-    entered: State, setting: Setting, schedule: Schedule, exposed: Sequence[Exposed], history: bool
-) -> list[_Part]:
-    exposures = [one.exposure for one in exposed]
-    seen = products.watched(setting)
-    active: dict[str, tuple[Skin, tuple[Found, ...]]] = {}
-    parts: list[_Part] = []
-    end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
-    for _ in range(ROUNDS):
-        skins = [own for own, _ in active.values()]
-        parts = [
-            _advance(entered, setting, schedule, exposures, index, active, history)
-            for index in tied(exposures, skins, len(setting.impurities))
-        ]
-        x = _collect(entered.x, parts)
-        near = {name: products.skin(setting, name) for name in products.within_reach(seen, x, active)}
-        beyond = {n: s for n, s in near.items() if products.saturation(s[0], x, end).max() > BEYOND}
-        if not beyond:
-            break
-        active |= beyond
-    return parts
-
-
-def _advance(
-    entered: State,
-    setting: Setting,
-    schedule: Schedule,
-    exposures: Sequence[Exposure],
-    index: NDArray[np.int64],
-    active: Mapping[str, tuple[Skin, tuple[Found, ...]]],
-    history: bool,
-) -> _Part:
-    """Move one group of tied elements."""
-    rows, sub = [], []
-    for c, exposure in enumerate(exposures):
-        part = restrict(exposure, index)
-        if part.carriers or part.films:
-            rows.append(c)
-            sub.append(part)
-    own = {name: pair for name, pair in active.items() if pair[0].nu[index].any()}
-    if own and sub:
-        skins = tuple(replace(skin, nu=skin.nu[index]) for skin, _ in own.values())
-        sub[0] = replace(sub[0], skins=skins)
-    state = State(
-        entered.x[index],
-        entered.suspended[index],
-        None if entered.profile is None else entered.profile[index],
-        entered.film,
-        entered.films,
-        None if entered.surface is None else entered.surface[index],
-    )
-    diffusivity = None
-    if not setting.liquid:
-        diffusivity = _diffusivity(setting, index)
-    host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
-    pickup = advance(state, host, setting.choice.form, schedule, sub, history=history, nodes=NODES)
-    return _Part(index, tuple(rows), pickup, tuple(own.values()))
-
-
-def _diffusivity(setting: Setting, index: NDArray[np.int64]) -> Curve:
-    rows = []
-    for i in index:
-        found = diffusivity(setting, setting.impurities[int(i)])
-        rows.append(np.full((len(setting.T), 1), -np.inf) if isinstance(found, Gap) else found[0])
-    return Curve(setting.T, np.stack(np.broadcast_arrays(*rows)))
-
-
-def _collect(x: Array, parts: Sequence[_Part]) -> Array:
-    after = x.copy()
-    for part in parts:
-        after[part.index] = part.pickup.state.x
-    return after
 
 
 def _melting(library: Library, host: str) -> float:
@@ -290,7 +189,7 @@ def _gather(
     schedule: Schedule,
     exposed: tuple[Exposed, ...],
     ledger: Array,
-    parts: Sequence[_Part],
+    parts: Sequence[Part],
 ) -> Passed:
     """Put the groups together again, with what is known of each element."""
     n, count = setting.draws.n, len(setting.impurities)
@@ -310,6 +209,9 @@ def _gather(
             film |= dict(zip(done.state.films, done.state.film, strict=True))
         for c, row in zip(part.rows, done.ledger[: len(part.rows)], strict=True):
             ledger[c][part.index] += row
+            for _, other, atoms in (s for s in part.shared if s[0] == c):
+                ledger[c][other] += atoms * row[0]
+                x[other] += atoms * row[0]
         shares[:, part.index] = np.median(done.shares, axis=-1)
         attacked |= done.attacked
         flags |= done.flags
@@ -382,7 +284,7 @@ def _enrich(after: State, ledger: Array, setting: Setting, loss: Array) -> tuple
 
 
 def _records(
-    setting: Setting, exposed: Sequence[Exposed], parts: Sequence[_Part], loss: tuple[Found, ...]
+    setting: Setting, exposed: Sequence[Exposed], parts: Sequence[Part], loss: tuple[Found, ...]
 ) -> dict[str, tuple[Found, ...]]:
     """Every record that a number of an element hangs on: those of all elements tied to it."""
     row = setting.library.find("hosts", host=setting.host, phase=setting.phase)
@@ -392,7 +294,7 @@ def _records(
         members = [setting.impurities[int(i)] for i in part.index]
         used: list[Found] = [*density, *loss]
         for one in exposed:
-            touching = [c for c in one.exposure.carriers if c.nu[part.index].any()]
+            touching = [c for c in one.exposure.carriers if c.name in part.names]
             for carrier in touching:
                 used.extend(one.carrier_records.get(carrier.name, ()))
             if touching or one.exposure.films:
@@ -400,8 +302,9 @@ def _records(
                     used.extend(one.element_records.get(member, ()))
         for _, found in part.skins:
             used.extend(found)
+        behind = [f for i in part.behind for f in records[setting.impurities[i]].values()]
         for member in members:
-            records[member] |= {found.record.quantity: found for found in used}
+            records[member] |= {found.record.quantity: found for found in (*used, *behind)}
     for one in exposed:
         if one.gain is None:
             continue

@@ -11,17 +11,14 @@ from collections.abc import Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.contacts.setting import Exposed, Setting, exchange, spread_factor
+from purity.contacts.setting import T_ROOM, Exposed, Setting, spread_factor
 from purity.contacts.storage import grown, storage_films
-from purity.database import Found, Gap
-from purity.driving_force.substances import atoms
-from purity.kinetics.exposure import Exposure
+from purity.database import Found
+from purity.driving_force.pure import atoms
+from purity.kinetics.exposure import Curve, Exposure
 from purity.scenario import Charge, Contact, Dust, Given, Residue
 
 Array = NDArray[np.float64]
-
-#: Seconds in a day.
-DAY = 86400.0
 
 
 def charge(contact: Contact, setting: Setting) -> Exposed:
@@ -51,9 +48,9 @@ def charge(contact: Contact, setting: Setting) -> Exposed:
         for element, mol in _elements(setting, species, mass * area).items():
             amounts[element] = amounts.get(element, np.zeros(1)) + mol
             records[element] = (*records.get(element, ()), record)
-    days = setting.sample(body.days_in_air)
+    seconds = setting.sample(body.days_in_air)
     for film, found in storage_films(setting, "indoor air"):
-        thickness = grown(film, days * DAY, 295.0)
+        thickness = grown(film, seconds, T_ROOM)
         for j, element in enumerate(setting.impurities):
             if film.nu[j]:
                 amounts[element] = amounts.get(element, np.zeros(1)) + film.nu[j] * thickness * area
@@ -98,15 +95,9 @@ def _brought(
     gain = np.stack(
         [np.broadcast_to(amounts.get(e, zero), zero.shape) / setting.amount for e in setting.impurities]
     )
-    rate, _ = exchange(setting, "free surface") if not setting.liquid else (_none(setting), {})
+    rate = Curve(setting.T[:1], np.zeros((len(setting.impurities), 1, 1)))
     exposure = Exposure(contact.name, setting.sample(contact.area), rate, ())
     return Exposed(exposure, gain, {}, records, inputs)
-
-
-def _none(setting: Setting):  # type: ignore[no-untyped-def]
-    from purity.kinetics.exposure import Curve
-
-    return Curve(setting.T[:1], np.zeros((len(setting.impurities), 1, 1)))
 
 
 def _surface_rows(setting: Setting, surface: str) -> list[Found]:
@@ -127,4 +118,4 @@ def _elements(setting: Setting, species: str, mass: Array) -> dict[str, Array]:
     }
 
 
-__all__ = ["Gap", "charge", "dust", "residue"]
+__all__ = ["charge", "dust", "residue"]

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.constants import ATM, P0, V_NORMAL, R
+from purity.constants import ATM, GAS_FORMERS, P0, V_NORMAL, R
 from purity.contacts.setting import (
     T_ROOM,
     Exposed,
@@ -28,7 +28,7 @@ from purity.contacts.setting import (
     vapour_speed,
 )
 from purity.database import Found, Gap
-from purity.driving_force.substances import atoms, gibbs_energy
+from purity.driving_force.pure import atoms, gibbs_energy
 from purity.kinetics.exposure import Carrier, Curve, Exposure
 from purity.scenario import Atmosphere, Contact, Flowing, Furnace, Given, Pumped, Sealed
 
@@ -59,8 +59,6 @@ class Load:
     records : tuple of Found
     inputs : tuple of Given
     notes : tuple of str
-    measured : tuple of str
-        Gases that were measured near the metal.
     main : str
         Gas through which the others diffuse.
     flowing : bool
@@ -73,7 +71,6 @@ class Load:
     records: tuple[Found, ...]
     inputs: tuple[Given, ...]
     notes: tuple[str, ...]
-    measured: tuple[str, ...] = ()
     main: str = "Ar"
     flowing: bool = False
 
@@ -159,14 +156,13 @@ def gas_load(atmosphere: Atmosphere, setting: Setting, area: Array) -> Load:
                 (),
                 (*inputs, volume),
                 (),
-                (),
                 _main(fractions),
             )
         case Pumped():
             return _pumped(setting, furnace, atmosphere, fractions, pressure, area, inputs)
         case _:
             activity = {name: x * pressure / P0 for name, x in fractions.items()}
-            return Load(activity, None, {}, pressure, (), inputs, (), (), _main(fractions))
+            return Load(activity, None, {}, pressure, (), inputs, (), _main(fractions))
 
 
 def _sources(
@@ -227,13 +223,12 @@ def _flowing(
             records,
             (*inputs, *furnace.exhaust.values()),
             notes,
-            tuple(measured),
             _main(fractions),
             True,
         )
     if not entering:
         notes = ("line and furnace assumed perfect: no leak, outgassing or exhaust given",)
-    return Load(activity, supply, {}, pressure, records, inputs, notes, (), _main(fractions), True)
+    return Load(activity, supply, {}, pressure, records, inputs, notes, _main(fractions), True)
 
 
 def _main(fractions: Mapping[str, Array]) -> str:
@@ -277,10 +272,11 @@ def gas_conductance(setting: Setting, name: str, load: Load) -> tuple[Curve, tup
     """Return supply, gas film and sticking in series, mol m-2 s-1 per unit activity, (K, N).
 
     The film passes k P0/(R T), k scaled with the diffusivity at the total pressure; molecules stick at
-    the rate of Hertz and Knudsen. For a gas that was measured in the exhaust the supply is no limit.
+    the rate of Hertz and Knudsen. A measured exhaust is what the stream carries past the metal, so the
+    metal cannot take more of it than the stream brings.
     """
     T = setting.T[:, np.newaxis]
-    parts: list[Array | None] = [None if name in load.measured else load.supply]
+    parts: list[Array | None] = [load.supply]
     records: list[Found] = []
     transport, film = _transport(setting, name, load.main), _film(setting, load)
     if transport is not None and film is not None:
@@ -340,6 +336,8 @@ def _evaporation(setting: Setting, load: Load) -> list[tuple[Carrier, tuple[Foun
     """Return evaporation of each impurity as its atoms: activity 0 far away, gas film and free flight."""
     rows = []
     for element in setting.impurities:
+        if element in GAS_FORMERS:
+            continue
         conductance, found = gas_conductance(setting, element, load)
         made = carrier(
             setting,

@@ -15,7 +15,7 @@ from purity.constants import R
 from purity.contacts.setting import Exposed, Setting, spread_factor
 from purity.contacts.storage import environment_of, relative_humidity, stored
 from purity.database import Found, Gap
-from purity.driving_force.substances import atoms
+from purity.driving_force.pure import atoms
 from purity.scenario import Atmosphere, Contact, Package
 
 Array = NDArray[np.float64]

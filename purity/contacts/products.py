@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 from purity.contacts.setting import Setting, stoichiometry
 from purity.database import Found, Gap
 from purity.draws import Draws
-from purity.driving_force.substances import Energy, ln_dissolution
+from purity.driving_force.pure import Energy
+from purity.driving_force.substances import ln_dissolution
 from purity.kinetics.exposure import Curve, Skin, ln_at
 
 Array = NDArray[np.float64]
@@ -49,6 +50,25 @@ def within_reach(seen: Mapping[str, tuple[Array, float]], x: Array, known: Colle
     """
     highest = np.log(np.maximum(x.max(axis=-1), 1e-30))
     return [f for f, (nu, ln_k) in seen.items() if f not in known and float(nu @ highest) - ln_k > -REACH]
+
+
+def supported(seen: Mapping[str, tuple[Array, float]], x: Array) -> Array:
+    """Return contents that the metal can hold dissolved beside its own others, nominally, (I, N).
+
+    A compound of two elements beyond its saturation takes down the one that it has less to spare of.
+    """
+    held = np.log(np.maximum(x, 1e-30))
+    for nu, ln_k in seen.values():
+        members = np.flatnonzero(nu)
+        if len(members) != 2:
+            continue
+        least = members[
+            int(np.argmin(np.median(held[members] - np.log(nu[members])[:, np.newaxis], axis=-1)))
+        ]
+        other = members[0] + members[1] - least
+        room = (ln_k - nu[other] * held[other]) / nu[least]
+        held[least] = np.minimum(held[least], np.maximum(room, np.log(1e-30)))
+    return np.exp(held)
 
 
 def skin(setting: Setting, formula: str) -> tuple[Skin, tuple[Found, ...]]:

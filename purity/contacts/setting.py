@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 from purity.constants import R
 from purity.database import TABLES, Found, Gap, Library, Record, ln_value
 from purity.draws import Draws, normal, sample
-from purity.driving_force.substances import Energy, atoms, ln_dissolution
+from purity.driving_force.pure import Energy, atoms
+from purity.driving_force.substances import ln_dissolution
 from purity.kinetics.exposure import Carrier, Curve, Exposure
 from purity.scenario import Choice, Given, Lot
 

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from purity.constants import P0, R
 from purity.contacts.setting import Exposed, Setting, carrier_of, flat, spread_factor
 from purity.database import Found, Gap, Record
-from purity.driving_force.substances import atoms, gibbs_energy
+from purity.driving_force.pure import atoms, gibbs_energy
 from purity.kinetics.exposure import Curve, Exposure, Film
 from purity.kinetics.films import thickness
 from purity.scenario import Atmosphere, Contact
@@ -72,7 +72,8 @@ def stored(
     inputs, records, notes
         What stands behind the humidity and the supply.
     """
-    area = setting.sample(contact.area)
+    form = setting.choice.form
+    area = setting.sample(contact.area) if form is None else np.array([form.area])
     films = storage_films(setting, environment)
     gaps: dict[str, tuple[Gap, ...]] = {}
     if not films:

@@ -23,7 +23,7 @@ from purity.contacts.setting import (
 )
 from purity.database import Found, Gap
 from purity.draws import normal
-from purity.driving_force.substances import atoms
+from purity.driving_force.pure import atoms
 from purity.kinetics.exposure import Carrier, Exposure
 from purity.scenario import Contact, Given, Material
 
@@ -99,7 +99,7 @@ def wall(contact: Contact, setting: Setting) -> Exposed:
         add(made, formula, found)
 
     opening, gate = wetting(setting, material)
-    rate, element_records = exchange(setting, "wall", opening * contact_share(contact, setting))
+    rate, element_records = exchange(setting, "wall", opening)
     element_records = {element: (*found, *gate) for element, found in element_records.items()}
     for quantity, element in _withdrawn(setting, material):
         gap = Gap(quantity, "this content has been withdrawn by your own table")
@@ -126,12 +126,6 @@ def wetting(setting: Setting, material: Material) -> tuple[Array, tuple[Found, .
     share = np.minimum(1.0, record.fields["factor"] * np.exp(record.spread * z))
     wets = setting.T[:, np.newaxis] >= record.fields["T_gate_K"]
     return np.where(wets, 1.0, share), (found,)
-
-
-def contact_share(contact: Contact, setting: Setting) -> Array:
-    """Return the share of the area that really touches, (N,)."""
-    given = contact.inputs.get("contact_share")
-    return np.ones(1) if given is None else setting.sample(given)
 
 
 def _phases(material: Material, setting: Setting) -> list[str]:
