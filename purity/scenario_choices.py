@@ -25,11 +25,15 @@ _VESSEL: Final = ("melt", "cast", "heat")
 
 @dataclass(frozen=True, slots=True)
 class Known:
-    """What the steps need to know of the rest of the file; a value is None where it had a fault."""
+    """What the steps need to know of the rest of the file; a value is None where it had a fault.
+
+    `charge_said` tells a charge with a fault from one that nobody gave.
+    """
 
     host: str
     mass: Given | None
     charge: Charge | None
+    charge_said: bool
     furnace: Furnace | None
     furnaces: Mapping[str, Furnace] = field(default_factory=dict)
 
@@ -109,7 +113,8 @@ def _profile(keys: Keys) -> Points | None:
     if held and duration is None:
         keys.missing("duration", "duration, such as '45 min' or '180 d'")
         return None
-    if not held and duration is not None:
+    own = keys.choice if "temperature" in keys.choice else keys.step
+    if not held and (duration is not None) and ("duration" in own or "duration" in keys.choice):
         keys.findings.add(
             keys.place("duration"), "the profile of temperature already ends the step; leave duration out"
         )
@@ -122,6 +127,8 @@ def _profile(keys: Keys) -> Points | None:
 
 def _in_phase(keys: Keys, profile: Points, *, liquid: bool) -> None:
     """Check that a melt is liquid and that a piece stays solid at the hottest point."""
+    if not keys.host:
+        return
     hottest = max(T.median for _, T in profile)
     try:
         phase = phase_at(keys.library, keys.host, hottest)
@@ -172,7 +179,8 @@ def _melt(keys: Keys, known: Known, profile: Points | None) -> tuple[Form | None
     if profile:
         _in_phase(keys, profile, liquid=True)
     surface = _bath(keys, known, profile)
-    area = keys.given("wall_area")
+    own_form = "form" in keys.choice and "wall_area" not in keys.choice
+    area = None if own_form else keys.given("wall_area")
     if area is None and surface is not None:
         area = exact(keys.path("form"), surface.wall)
     if area is None:
@@ -191,7 +199,7 @@ def _melt(keys: Keys, known: Known, profile: Points | None) -> tuple[Form | None
             known.mass,
             keys.path("charge"),
         )
-    elif charge is None:
+    elif charge is None and not known.charge_said:
         keys.missing(
             "charge", "what goes into this melt: { form = { ... }, surface = 'etched', days_in_air = 3 }"
         )

@@ -214,11 +214,10 @@ def _furnaces(
 
 
 def _top(findings: Findings, data: Mapping[str, Any], library: Library) -> dict[str, Any]:
-    table = validate(
-        TopTable,
-        {k: v for k, v in data.items() if k not in TABLES},
-        lambda place, text: findings.add(place, text),
-    )
+    own = {key: value for key, value in data.items() if key in TopTable.model_fields}
+    for key in data.keys() - own.keys() - set(TABLES):
+        findings.add((key,), f"unknown key; {nearest(key, (*TopTable.model_fields, *TABLES))}")
+    table = validate(TopTable, own, lambda place, text: findings.add(place, text))
     if "title" not in table:
         findings.missing(("title",), "title of the scenario")
     risk = table.get("risk")
@@ -252,14 +251,15 @@ def build(path: str, data: dict[str, Any], lines: Lines, library: Library) -> Sc
     lot = _lot(findings, data, library)
     furnace, furnaces = _furnaces(findings, data, library)
     mass, charge, taken = lot.mass if lot.mass.high > 0 else None, lot.charge, set[str]()
+    said = isinstance(data.get("lot"), dict) and "charge" in data["lot"]
     steps = []
     for index, raw in enumerate(_steps(findings, data)):
-        known = Known(lot.host, mass, charge, furnace, furnaces)
+        known = Known(lot.host, mass, charge, charge is None and said, furnace, furnaces)
         made = step(findings, index, raw, library, known, taken)
         if made:
             steps.append(made)
             # pieces are melted once; what goes into a second melt is not what was bought
-            charge = None if made.process == "melt" else charge
+            charge, said = (None, False) if made.process == "melt" else (charge, said)
     if findings.faults:
         raise ScenarioError(path, findings.faults)
     _closed(findings, lot)

@@ -180,7 +180,8 @@ def stored(keys: Keys, room: Atmosphere | None, form: Form | None) -> list[Conta
 
 def melt_gas(keys: Keys, found: Atmosphere | None, bath: Bath | None) -> list[Contact]:
     """Return the gas over a melt, or over the top of a cast with the stream that fell through it."""
-    free = keys.given("free_surface")
+    own_form = "form" in keys.choice and "free_surface" not in keys.choice
+    free = None if bath is not None and own_form else keys.given("free_surface")
     if free is None and bath is not None:
         free = exact(keys.path("form"), bath.free)
     if free is None:

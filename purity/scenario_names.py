@@ -86,10 +86,8 @@ class Findings:
 
 def nearest(name: str, known: tuple[str, ...], count: int = 3) -> str:
     """Return the known names nearest to one, as the end of a message."""
-    near = get_close_matches(name, known, count, 0.5)
-    if not near:
-        folded = {other.casefold(): other for other in known}
-        near = [folded[name.casefold()]] if name.casefold() in folded else []
+    folded = {other.casefold(): other for other in reversed(known)}
+    near = [folded[word] for word in get_close_matches(name.casefold(), folded, count, 0.5)]
     if near:
         return f"nearest: {'; '.join(near)}"
     return f"known: {'; '.join(known[:12])}{'; ...' if len(known) > 12 else ''}"
@@ -110,7 +108,9 @@ def known_element(findings: Findings, place: Place, symbol: str, library: Librar
     elements = library.names("elements", "element")
     if symbol in elements:
         return True
-    findings.add(place, f"{symbol!r} is no element; {nearest(symbol, elements)}")
+    words = {row.words.get("name", "").casefold(): row.words["element"] for row in library.rows("elements")}
+    cure = f"write {words[symbol.casefold()]}" if symbol.casefold() in words else nearest(symbol, elements)
+    findings.add(place, f"{symbol!r} is no symbol of an element; {cure}")
     return False
 
 
@@ -152,9 +152,11 @@ def _phases(
     compounds = library.names("gibbs", "formula")
     for formula, given in table.items():
         if known_formula(findings, (*place, formula), formula, library) and formula not in compounds:
-            findings.add(
-                (*place, formula), f"no table holds the compound {formula}; {nearest(formula, compounds)}"
+            alike = tuple(
+                f for f in compounds if set(elements_of(f) or ()) == set(elements_of(formula) or ())
             )
+            near = nearest(formula, alike or compounds)
+            findings.add((*place, formula), f"no table holds the compound {formula}; {near}")
         if given.law != "exact":
             findings.add((*place, formula), "one number is wanted for a phase, without a range")
     return {formula: given.median for formula, given in table.items()}

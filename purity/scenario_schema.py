@@ -408,6 +408,8 @@ def _explain(error: Any, model: type[BaseModel]) -> str:
         "dict_type": "a table is wanted: { ... }",
         "model_type": "a table is wanted: { ... }",
     }
+    if kind == "model_type" and error["loc"][-1] in _REFS:
+        return f"{error['input']!r}: a name in quotes or a table is wanted"
     return f"{error['input']!r}: {wanted.get(kind, error['msg'])}"
 
 
