@@ -9,13 +9,14 @@ from typing import Any, Final
 from purity.database import Library, phase_at
 from purity.errors import OutOfRangeError
 from purity.scenario import Charge, Choice, Contact, Form, Furnace, Given, Pumped, Step, exact
+from purity.scenario_check import validate
 from purity.scenario_contacts import charged, cleaned, dust, heel, neighbours, supports, touched, walls
 from purity.scenario_forms import ROOM, Bath, bath, density, from_area, pieces
 from purity.scenario_gases import atmosphere, melt_gas, stored
 from purity.scenario_keys import Keys, scaled
 from purity.scenario_lines import Place
 from purity.scenario_names import Findings, gas, nearest, species
-from purity.scenario_schema import PROCESS_KEYS, ChargeTable, FurnaceTable, PieceTable, StepTable, validate
+from purity.scenario_schema import PROCESS_KEYS, ChargeTable, FurnaceTable, PieceTable, StepTable
 
 Points = tuple[tuple[Given, Given], ...]
 _ALWAYS: Final = frozenset({"name", "process", "temperature", "duration"})

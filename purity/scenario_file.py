@@ -17,10 +17,11 @@ from purity.database import Library
 from purity.errors import ScenarioError
 from purity.quantities import show_content
 from purity.scenario import Certified, Furnace, Given, Lot, Scenario
+from purity.scenario_check import validate
 from purity.scenario_choices import Known, charge_of, furnace_of, step
 from purity.scenario_lines import Lines, Place, parse_text, read_text
 from purity.scenario_names import Findings, content, known_element, known_formula, nearest
-from purity.scenario_schema import ChargeTable, Content, FurnaceTable, LotTable, TopTable, validate
+from purity.scenario_schema import ChargeTable, Content, FurnaceTable, LotTable, TopTable
 
 #: Limit on the sum of all metals in the table of limits.
 METALS = "metals"

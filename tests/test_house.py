@@ -14,7 +14,8 @@ NUMBERS = {"errors", "constants"}
 KINETICS_BASE = {"kinetics.exposure", "kinetics.arrhenius", "kinetics.schedule", "kinetics.transfer"}
 BATH = {f"kinetics.{n}" for n in ("stage", "flux_newton", "arrow", "passive")}
 DRIVING_FORCE = {
-    f"driving_force.{n}" for n in ("solution", "substances", "species", "equilibrium", "estimate", "sensitivity", "nonideal")
+    f"driving_force.{n}"
+    for n in ("solution", "substances", "species", "equilibrium", "estimate", "sensitivity", "nonideal")
 }
 EQUILIBRIUM = {f"driving_force.{n}" for n in ("components", "interior", "newton", "problem")}
 CONTACTS = {"contacts", "contacts.*"}
@@ -100,7 +101,8 @@ ALLOWED: dict[str, set[str]] = {
     "affinity": BELOW_ASSESS | {"assess"},
     "new": BELOW_ASSESS | {"assess"},
     "scenario_lines": {"errors"},
-    "scenario_schema": NUMBERS | {"scenario", "quantities", "scenario_lines"},
+    "scenario_schema": NUMBERS | {"scenario", "quantities"},
+    "scenario_check": {"scenario_lines", "scenario_schema"},
     "scenario_names": SCENARIO_FILE | {"composition", "scenario_schema"},
     "scenario_forms": SCENARIO_FILE | {"scenario_schema", "scenario_names"},
     "scenario_keys": SCENARIO_FILE | {"scenario_schema", "scenario_names"},
@@ -108,8 +110,9 @@ ALLOWED: dict[str, set[str]] = {
     | {"scenario_schema", "scenario_names", "scenario_forms", "scenario_keys"},
     "scenario_contacts": SCENARIO_FILE | {"scenario_schema", "scenario_names", "scenario_keys"},
     "scenario_choices": SCENARIO_FILE
-    | {f"scenario_{n}" for n in ("schema", "names", "forms", "keys", "gases", "contacts")},
-    "scenario_file": SCENARIO_FILE | {f"scenario_{n}" for n in ("schema", "names", "forms", "choices")},
+    | {f"scenario_{n}" for n in ("schema", "check", "names", "forms", "keys", "gases", "contacts")},
+    "scenario_file": SCENARIO_FILE
+    | {f"scenario_{n}" for n in ("schema", "check", "names", "forms", "choices")},
     "report.*": {"result", "report.*"},
     "report": {"result", "report.*"},
 }

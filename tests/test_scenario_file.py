@@ -550,7 +550,7 @@ FAULTS = [
     ('container = "magnesia"', 'container = "magnesja"', "step.melt.vacuum.container", "nearest: magnesia", ""),
     ('container = "magnesia"', "container = 5", "step.melt.vacuum.container", "a name in quotes or a table", ""),
     ("phases = { Al2O3 = 0.997 }", "phases = { Al2O3 = 0.5 }", "step.melt.own.container.phases", "must make 1", ""),
-    ("phases = { Al2O3 = 0.997 }", "phases = { Al2O4 = 0.997 }", "step.melt.own.container.phases.Al2O4", "nearest: Al2O3", ""),
+    ("phases = { Al2O3 = 0.997 }", "phases = { Al2O4 = 0.997 }", "step.melt.own.container.phases.Al2O4", "; Al2O3", ""),
     ("phases = { Al2O3 = 0.997 }", "phases = { alumina = 0.997 }", "step.melt.own.container.phases.alumina", "no formula", ""),
     ("phases = { Al2O3 = 0.997 }, ", "", "step.melt.own.container.phases", "missing: phases", "our alumina"),
     ('SiO2 = "1000 ppm"', 'SiO2 = "1000 ppm(mol)"', "step.melt.own.container.traces.SiO2", "by mass", ""),
