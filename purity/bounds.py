@@ -38,7 +38,7 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
     "solubility": {"T_K": (200.0, 4000.0), "limit_ppm_mass": (0.05, 5e5)},
     "containers": {"mass_fraction": (5e-3, 1.0)},
     "traces": {"content_ppm_mass": (5e-3, 1e5)},
-    "wetting": {"T_gate_K": (0.0, 4000.0), "factor": (1e-5, 1.0)},
+    "wetting": {"factor": (2e-4, 1.0)},
     "attack": {"rate_m_per_s": (1e-11, 1e-4), "T_K": (250.0, 4000.0)},
     "atmospheres": {"fraction_ppm_mol": (0.0, 1e6)},
     "surfaces": {"amount_mg_per_m2": (1e-3, 1e3)},
@@ -50,7 +50,17 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
     "desiccants": {"capacity_kg_per_kg": (0.01, 1.0), "floor_Pa": (1e-4, 1e3)},
     "sticking": {"probability": (1e-8, 1.0)},
     "gas_transport": {"D_m2_per_s": (1e-6, 1e-3), "T_ref_K": (200.0, 2000.0), "exponent": (1.4, 2.1)},
-    "transfer": {"k_m_per_s": (1e-6, 1.0), "D_ref_m2_per_s": (1e-10, 1e-2), "exponent": (0.0, 1.0)},
+    "transfer": {"exponent": (0.1, 1.0)},
+    "films": {"Q_kJ_per_mol": (20.0, 400.0), "density_kg_per_m3": (1000.0, 15000.0)},
+    "miedema": {
+        "phi_V": (1.0, 8.0),
+        "n_ws_third": (0.3, 3.0),
+        "V_two_thirds_cm2": (1.0, 30.0),
+        "a": (0.01, 0.3),
+        "R_over_P": (0.0, 5.0),
+    },
+    "hot_zones": {"getter_share": (0.0, 1.0)},
+    "hazards": {"T_min_K": (0.0, 4000.0)},
     "priors": {"low_ppm": (1e-4, 10.0), "high_ppm": (0.1, 1000.0)},
 }
 #: 0, or low <= |value| <= high.
@@ -59,12 +69,14 @@ SIZE: Mapping[str, Mapping[str, Bounds]] = {
     "activity": {"A_K": (15.0, 5e4), "B": (1e-4, 12.0)},
     "sieverts": {"log10_A_K": (400.0, 4e4), "log10_B": (0.1, 12.0)},
     "interaction": {"epsilon": (0.1, 1000.0)},
+    "wetting": {"T_gate_K": (250.0, 4000.0)},
 }
 #: Column that names the kind of a row, and bounds of a column by kind.
 KIND: Mapping[str, str] = {
     "wall_values": "property",
     "films": "law",
     "sieverts": "solute",
+    "transfer": "place",
 }
 BY_KIND: Mapping[tuple[str, str, str], Bounds] = {
     ("wall_values", "leach_depth", "value_SI"): (5e-8, 5e-3),
@@ -73,6 +85,12 @@ BY_KIND: Mapping[tuple[str, str, str], Bounds] = {
     ("wall_values", "service_oxidising", "value_SI"): (400.0, 3500.0),
     ("wall_values", "service_inert", "value_SI"): (400.0, 3600.0),
     ("wall_values", "service_vacuum", "value_SI"): (400.0, 3600.0),
+    ("transfer", "wall", "k_m_per_s"): (2e-6, 2e-3),
+    ("transfer", "free surface", "k_m_per_s"): (2e-6, 2e-3),
+    ("transfer", "gas film", "k_m_per_s"): (5e-3, 5.0),
+    ("transfer", "wall", "D_ref_m2_per_s"): (1e-10, 1e-7),
+    ("transfer", "free surface", "D_ref_m2_per_s"): (1e-10, 1e-7),
+    ("transfer", "gas film", "D_ref_m2_per_s"): (1e-5, 1e-2),
     ("films", "limiting", "p1"): (1e-10, 1e-7),
     ("films", "logarithmic", "p1"): (5e-11, 2e-8),
     ("sieverts", "H", "log10_B"): (0.3, 3.6),

@@ -162,6 +162,9 @@ def _number(row: Mapping[str, str], name: str, wrong: list[str], default: float 
         value = inf
     if isfinite(value) and "_" not in text:
         return value
+    if not text:
+        wrong.append(f"{name} is blank")
+        return 0.0
     cure = "write a plain number" + (" with a decimal point" if "," in text else "")
     wrong.append(f"{name} is {text!r}: {cure}")
     return 0.0
