@@ -367,10 +367,28 @@ def step(
         findings.missing((*at, "process"), "process: melt, cast, heat, clean, touch or store")
     options = _tables(findings, (*at, "choice"), raw.get("choice", []), "[[step.choice]]")
     if not options:
-        keys = Keys(findings, library, known.host, table, {}, at, at, name, name)
-        only = choice(keys, name, known)
-        return Step(name, only.process, (only,)) if only else None
-    choices: list[Choice] = []
+        views = [Keys(findings, library, known.host, table, {}, at, at, name, name)]
+    else:
+        views = _views(findings, library, known.host, table, at, name, options)
+    labels = [view.path_choice.removeprefix(f"{name}/") for view in views]
+    made = [choice(view, label, known) for view, label in zip(views, labels, strict=True)]
+    _tell_lacking(findings, at, views)
+    choices = tuple(one for one in made if one is not None)
+    process = table.get("process") or (choices[0].process if choices else None)
+    return Step(name, process, choices) if process else None
+
+
+def _views(
+    findings: Findings,
+    library: Library,
+    host: str,
+    table: Mapping[str, Any],
+    at: Place,
+    name: str,
+    options: list[Mapping[str, Any]],
+) -> list[Keys]:
+    """Return the keys of every choice laid over those of the step."""
+    views: list[Keys] = []
     names: set[str] = set()
     for number, option in enumerate(options):
         here: Place = (*at, "choice", number)
@@ -380,8 +398,13 @@ def step(
 
         own = validate(StepTable, option, found)
         label = _name(findings, here, own.get("name"), names, "choice")
-        keys = Keys(findings, library, known.host, table, own, at, here, name, f"{name}/{label}")
-        if made := choice(keys, label, known):
-            choices.append(made)
-    process = table.get("process") or (choices[0].process if choices else None)
-    return Step(name, process, tuple(choices)) if process else None
+        views.append(Keys(findings, library, host, table, own, at, here, name, f"{name}/{label}"))
+    return views
+
+
+def _tell_lacking(findings: Findings, at: Place, views: list[Keys]) -> None:
+    """Tell the missing keys: once at the step where every choice lacks one, else at the choice."""
+    common = {key for key in views[0].lacking if all(key in view.lacking for view in views)}
+    for view in views:
+        for key, text in view.lacking.items():
+            findings.missing((*(at if key in common else view.at_choice), key), text)

@@ -21,10 +21,17 @@ _VACUUM: Final = 5e4
 
 
 def _renewal(keys: Keys) -> tuple[str, ...]:
-    """Keys that say how the gas is renewed; those of the choice come before those of the step."""
+    """Keys that say how the gas is renewed.
+
+    Those of a step hold unless the choice has its own, or describes its gas whole: a vacuum, or a
+    composition with its pressure.
+    """
     own = tuple(key for key in RENEWAL if keys.choice.get(key))
     table = keys.choice.get("atmosphere")
-    if own or (isinstance(table, GasTable) and _is_vacuum(table)):
+    described = isinstance(table, GasTable) and (
+        _is_vacuum(table) or (table.ref is None and "pressure" in keys.choice)
+    )
+    if own or described:
         return own
     return tuple(key for key in RENEWAL if keys.step.get(key))
 

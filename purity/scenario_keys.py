@@ -37,6 +37,8 @@ class Keys:
         "melt" and "melt/graphite under argon".
     notes : list of str
         What was assumed.
+    lacking : dict
+        Missing keys and what they should hold; told once at the step where every choice lacks them.
     """
 
     findings: Findings
@@ -49,6 +51,7 @@ class Keys:
     path_step: str
     path_choice: str
     notes: list[str] = field(default_factory=list)
+    lacking: dict[str, str] = field(default_factory=dict)
 
     def __contains__(self, key: str) -> bool:
         return key in self.choice or key in self.step
@@ -73,9 +76,9 @@ class Keys:
 
     def missing(self, key: str, text: str) -> None:
         """Note a missing key, unless one of the two tables had a faulty one."""
-        bad = (*self.at_step, key)
-        if not any(place[: len(bad)] == bad for place in self.findings.broken):
-            self.findings.missing((*self.at_choice, key), text)
+        places = ((*self.at_step, key), (*self.at_choice, key))
+        if not any(bad[: len(place)] == place for bad in self.findings.broken for place in places):
+            self.lacking[key] = text
 
     def assume(self, key: str, law: tuple[float, float] | float, why: str) -> Given:
         """Return a default of ours, marked, and note it."""

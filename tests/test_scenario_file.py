@@ -283,6 +283,15 @@ def test_a_choice_wins_over_its_step(library: Library) -> None:
         other = body(by_name[name], "gas")
         assert isinstance(other, Atmosphere)
         assert isinstance(other.supply, kind)
+    # a composition with its pressure says all of a gas: the step's flow is not for it
+    text = changed(
+        'container = "magnesia"\natmosphere = "vacuum"',
+        'container = "magnesia"\natmosphere = { O2 = 1 }',
+        text,
+    )
+    held = body(choices(read_string(text, library))["vacuum"], "gas")
+    assert isinstance(held, Atmosphere)
+    assert held.supply == Still()
 
 
 def test_named_furnace(library: Library) -> None:
@@ -538,13 +547,13 @@ FAULTS = [
     (STEP, STEP + '\nduration = "1 h"', "step.melt.duration", "already ends the step", "duration = \"1 h\""),
     (STEP, STEP + '\npackage = { barrier = "paper" }', "step.melt.package", "not used by process 'melt'", "package = { barrier = \"paper\" }"),
     (STEP, STEP + "\nstiring = 3", "step.melt.stiring", "nearest: stirring", "stiring"),
-    ('wall_area = "1020 cm2"\n', "", "step.melt.graphite.wall_area", "missing: wetted wall area", 'above name = "graphite"'),
+    ('wall_area = "1020 cm2"\n', "", "step.melt.wall_area", "missing: wetted wall area", 'above name = "melt"'),
     ('wall_area = "1020 cm2"', 'wall_area = "1020 cm2"\nform = { shape = "cylinder", diameter = "150 mm" }', "step.melt.wall_area", "not both", "wall_area"),
     ('wall_area = "1020 cm2"', 'form = { shape = "cylinder", diameter = "150 mm", height = "300 mm" }', "step.melt.form.height", "the lot weighs 25 kg", ""),
     ('wall_area = "1020 cm2"', 'form = { shape = "sphere", diameter = "150 mm" }', "step.melt.form.shape", "give wall_area and free_surface", ""),
     ('wall_area = "1020 cm2"', 'form = { shape = "cylinder", height = "150 mm" }', "step.melt.form.diameter", "missing: inner diameter", ""),
-    ('free_surface = "175 cm2"\n', "", "step.melt.vacuum.free_surface", "missing: free surface", 'above name = "vacuum"'),
-    ('immersed = ["fused silica sheath"]\n', "", "step.melt.own.immersed", "[] says none", 'above name = "own"'),
+    ('free_surface = "175 cm2"\n', "", "step.melt.free_surface", "missing: free surface", 'above name = "melt"'),
+    ('immersed = ["fused silica sheath"]\n', "", "step.melt.immersed", "[] says none", 'above name = "melt"'),
     ('["fused silica sheath"]', '["fused slica sheath"]', "step.melt.immersed.1", "nearest: fused silica", ""),
     ('container = "isostatic graphite, purified"\n', "", "step.melt.graphite.container", "missing: container", 'above name = "graphite"'),
     ('container = "magnesia"', 'container = "magnesja"', "step.melt.vacuum.container", "nearest: magnesia", ""),
@@ -601,8 +610,7 @@ def test_one_mistake_gives_one_fault(library: Library) -> None:
     for old, new, *_ in [*single, ('wall_area = "1020 cm2"', 'wall_area = "1020 cm"', "", "", "")]:
         with pytest.raises(ScenarioError) as error:
             read_string(changed(old, new), library)
-        texts = {fault.text for fault in error.value.faults}
-        assert len(texts) == 1, error.value
+        assert len(error.value.faults) == 1, error.value
 
 
 def test_all_faults_of_a_file_come_at_once_in_order(library: Library) -> None:
