@@ -63,10 +63,15 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.arrow": NUMBERS | KINETICS_BASE | {"kinetics.stage", "kinetics.flux_newton"},
     "kinetics.passive": NUMBERS | KINETICS_BASE | {"kinetics.stage"},
     "kinetics.sdirk": NUMBERS | KINETICS_BASE | BATH,
+    "kinetics.control": NUMBERS
+    | KINETICS_BASE
+    | {"kinetics.modes", "kinetics.pieces", "kinetics.passage"},
     "kinetics.bath": NUMBERS | KINETICS_BASE | BATH | {"kinetics.sdirk", "scenario"},
+    "kinetics.refine": NUMBERS | KINETICS_BASE | BATH | {"kinetics.bath"},
+    "kinetics.elasticity": NUMBERS | KINETICS_BASE | BATH | {"kinetics.bath"},
     "kinetics.body": NUMBERS
     | KINETICS_BASE
-    | {"scenario", "kinetics.laplace", "kinetics.modes", "kinetics.pieces", "kinetics.passage"},
+    | {"scenario", "kinetics.pieces", "kinetics.passage", "kinetics.control"},
     "kinetics.films": NUMBERS | KINETICS_BASE | {"scenario"},
     "kinetics.advance": NUMBERS | {"scenario", "kinetics.*"},
     "driving_force.solution": NUMBERS,

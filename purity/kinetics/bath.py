@@ -11,7 +11,7 @@ range is attacked: counting stops there.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 from itertools import pairwise
 
@@ -19,7 +19,7 @@ import numpy as np
 
 from purity.constants import DILUTE
 from purity.kinetics import flux_newton, passive
-from purity.kinetics.exposure import FLOOR, Array, Exposure
+from purity.kinetics.exposure import FLOOR, Array, Exposure, select
 from purity.kinetics.flux_newton import SETTLED, Block, Flags, Point
 from purity.kinetics.passive import GAMMA, GAUSS
 from purity.kinetics.schedule import Schedule, fractions, segments
@@ -28,6 +28,46 @@ from purity.kinetics.sdirk import step as reactive_step
 from purity.kinetics.stage import Bath, Coefficients, Index, coefficients, lay_out
 
 Rates = tuple[Coefficients, Coefficients]
+
+
+@dataclass(frozen=True, slots=True)
+class Case:
+    """A bath and what happens to it.
+
+    Parameters
+    ----------
+    total : (I, N) array
+        Total contents at the start, mol per mol of host.
+    density, amount : (1,) or (N,) arrays
+        Host, mol/m3 and mol.
+    schedule : Schedule
+    exposures : tuple of Exposure
+    """
+
+    total: Array
+    density: Array
+    amount: Array
+    schedule: Schedule
+    exposures: tuple[Exposure, ...]
+
+    def take(self, draws: Index) -> Case:
+        """Some draws, in the order and as often as given."""
+
+        def pick(values: Array) -> Array:
+            return values if values.ndim == 0 or values.shape[-1] == 1 else np.asarray(values[..., draws])
+
+        time, T = (v[..., draws] if v.ndim == 2 and v.shape[-1] > 1 else v for v in self._knots)
+        return Case(
+            self.total[:, draws],
+            pick(self.density),
+            pick(self.amount),
+            Schedule(time, T),
+            tuple(select(exposure, draws) for exposure in self.exposures),
+        )
+
+    @property
+    def _knots(self) -> tuple[Array, Array]:
+        return np.asarray(self.schedule.time), np.asarray(self.schedule.T)
 
 
 @dataclass(frozen=True, slots=True)
@@ -143,27 +183,12 @@ def two_roots(bath: Bath) -> bool:
     return False
 
 
-def integrate(
-    total: Array,
-    density: Array,
-    amount: Array,
-    schedule: Schedule,
-    exposures: Sequence[Exposure],
-    *,
-    nodes: int = 32,
-    history: bool = False,
-    tolerance: float = SETTLED,
-) -> Path:
+def integrate(case: Case, *, nodes: int = 32, history: bool = False, tolerance: float = SETTLED) -> Path:
     """Integrate a bath.
 
     Parameters
     ----------
-    total : (I, N) array
-        Total contents at the start, mol per mol of host.
-    density, amount : (1,) or (N,) arrays
-        Host, mol/m3 and mol.
-    schedule : Schedule
-    exposures : sequence of Exposure
+    case : Case
     nodes : int
         Steps a segment.
     history : bool
@@ -175,7 +200,8 @@ def integrate(
     -------
     Path
     """
-    bath = lay_out(exposures, density, amount, *total.shape)
+    total, schedule = case.total, case.schedule
+    bath = lay_out(case.exposures, case.density, case.amount, *total.shape)
     melt = _begin(bath, total, coefficients(bath, np.asarray(schedule.T[0]))[0])
     times = [np.asarray(schedule.time[0], dtype=float)]
     held: tuple[Array, Rates] | None = None

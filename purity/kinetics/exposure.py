@@ -207,6 +207,18 @@ def _secant(upper: Array, lower: Array, power: Array) -> Array:
     return np.asarray(large ** (power - 1) * rise)
 
 
+def width(exposure: Exposure) -> int:
+    """Number of draws of an exposure; 1 where all draws are alike."""
+    carriers = exposure.carriers
+    curves = [exposure.exchange, *(c.ln_k for c in carriers), *(skin.ln_k for skin in exposure.skins)]
+    curves += [c.conductance for c in carriers if c.conductance is not None]
+    curves += [c.activity for c in carriers if isinstance(c.activity, Curve)]
+    curves += [curve for film in exposure.films for curve in film.parameters]
+    arrays = [exposure.area, *(c.activity for c in carriers if not isinstance(c.activity, Curve))]
+    arrays += [c.inventory for c in carriers if c.inventory is not None]
+    return max([curve.ln.shape[-1] for curve in curves] + [np.atleast_1d(a).shape[-1] for a in arrays])
+
+
 def select(exposure: Exposure, draws: NDArray[np.int64]) -> Exposure:
     """Take some draws of an exposure, in the order and as often as given."""
     return Exposure(
