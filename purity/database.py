@@ -317,10 +317,13 @@ def _spec(table: str) -> Table:
 
 @lru_cache(maxsize=4096)
 def _nearest(name: str, known: tuple[str, ...]) -> tuple[str, ...]:
-    """Return up to three known names close to one, those with the same first words before others."""
+    """Return up to three known names close to one, out of those whose first word begins like its own."""
+    place = name.find(":") + 1
+    begin = name[place : place + 2].casefold()
+    like = [other for other in known if other[place : place + 2].casefold() == begin]
     head = name.split("/", 1)[0]
-    same = [other for other in known if other.split("/", 1)[0] == head]
-    return tuple(get_close_matches(name, same or known, 3, 0.5))
+    same = [other for other in like if other.split("/", 1)[0] == head]
+    return tuple(get_close_matches(name, same or like, 3, 0.6))
 
 
 def _named(library: Library, table: str, column: str, name: str) -> str | Gap:
