@@ -41,6 +41,8 @@ class Layout:
         Number of species outside the gas at fixed volume.
     mixed : tuple of (int, int, int)
         Phases of several species: number, first and last + 1 species.
+    needed : (P,) bool array
+        Phases that alone hold some element, so that they are present however little there is of it.
     """
 
     a: Array
@@ -53,6 +55,7 @@ class Layout:
     pairs: Array
     closed: int
     mixed: tuple[tuple[int, int, int], ...]
+    needed: NDArray[np.bool_]
 
 
 @dataclass(frozen=True, slots=True)
@@ -235,7 +238,9 @@ def layout(formula: Rows, phase: tuple[int, ...], fixed_volume: bool) -> tuple[L
     pairs = np.ascontiguousarray((a[:, low] * a[:, high]).T)
     closed = edges[-1][1] if edges else 0
     mixed = tuple((p, i, j) for p, (i, j) in enumerate(edges) if j - i > 1)
-    made = Layout(a, edges, numbers, families, pure, low, high, pairs, closed, mixed)
+    holds = np.array([a[numbers == p].any(axis=0) for p in range(max(phase) + 1)])
+    alone_in = (holds[:last] & (holds.sum(axis=0) == 1)).any(axis=1)
+    made = Layout(a, edges, numbers, families, pure, low, high, pairs, closed, mixed, alone_in)
     return made, columns, rows
 
 

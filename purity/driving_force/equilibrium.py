@@ -22,6 +22,8 @@ Mask = NDArray[np.bool_]
 CHUNK = 4000
 #: Rounding error of ln activity above which the balances are rewritten in the stable compounds.
 ROUNDING = 1e-11
+#: Rounding error of ln activity above which a draw is refused.
+UNSURE = 1e-6
 #: Certificate asked of every solved draw: RT per mole of atoms, and relative error of a balance.
 CERTIFIED = 1e-9
 
@@ -249,6 +251,7 @@ def _assemble(
     residual: Array = np.abs(balance / problem.total - 1.0).max(axis=0)
     gap = _gap(problem, out)
     proved = (out.start >= 0) & (np.abs(gap) < CERTIFIED) & (residual < CERTIFIED)
+    proved &= out.rounding <= UNSURE
     lacking: Array = system.formula[:, problem.absent].sum(axis=1, keepdims=True)
     u: Array = np.where(lacking > 0, -np.inf, -own)
     u[problem.species] = out.u + problem.g - own[problem.species]
@@ -352,7 +355,7 @@ def equilibrium(
         # Draws that run away leave by their infinities and go to the next start.
         with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
             out.put(at, _solve(problem.take(at), nominal))
-    if (lost := fit[out.start[fit] < 0]).size:
+    if (lost := fit[(out.start[fit] < 0) | (out.rounding[fit] > UNSURE)]).size:
         _explain(system, problem.take(lost[:1]))
     with np.errstate(over="ignore", invalid="ignore"):
         return _assemble(system, problem, out, own, levels)

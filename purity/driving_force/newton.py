@@ -21,6 +21,8 @@ Draws = dict[str, NDArray[np.float64]]
 
 #: Saturation above which an absent phase is added, in ln.
 ADMIT = 1e-9
+#: Share of its largest possible amount below which a shrinking phase is given up.
+_GONE = 1e-18
 _EPS = float(np.finfo(float).eps)
 
 
@@ -151,6 +153,23 @@ def _scales(matrix: Array) -> tuple[Array, Array]:
     return row, col
 
 
+def _wild(answer: Array, load: Array) -> Mask:
+    """Find systems that are singular to working precision."""
+    largest = np.maximum(np.abs(load).max(axis=(1, 2)), 1e-300)
+    wild: Mask = ~(np.abs(answer).max(axis=(1, 2)) < 1e8 * largest)
+    return wild
+
+
+def _scaled(matrix: Array, right: Array) -> tuple[Array, Array, Array, Array]:
+    row, col = _scales(matrix)
+    scaled: Array = matrix * row[:, :, None] * col[:, None, :]
+    load: Array = right * row[:, :, None]
+    answer: Array = np.full_like(load, np.inf)
+    with contextlib.suppress(np.linalg.LinAlgError):
+        answer[...] = np.linalg.solve(scaled, load)
+    return scaled, load, answer, col
+
+
 def solve(matrix: Array, right: Array) -> Array:
     """Solve scaled systems; least squares where a matrix is singular.
 
@@ -163,15 +182,9 @@ def solve(matrix: Array, right: Array) -> Array:
     -------
     (N, M, K) array
     """
-    row, col = _scales(matrix)
-    scaled: Array = matrix * row[:, :, None] * col[:, None, :]
-    load: Array = right * row[:, :, None]
-    answer: Array = np.full_like(load, np.inf)
-    with contextlib.suppress(np.linalg.LinAlgError):
-        answer[...] = np.linalg.solve(scaled, load)
+    scaled, load, answer, col = _scaled(matrix, right)
     # A potential that no present phase fixes, or more pure phases than potentials.
-    wild = ~(np.abs(answer).max(axis=(1, 2)) < 1e8 * np.maximum(np.abs(load).max(axis=(1, 2)), 1e-300))
-    if wild.any():
+    if (wild := _wild(answer, load)).any():
         answer[wild] = np.linalg.pinv(scaled[wild], rcond=1e-12) @ load[wild]
     return answer * col[:, :, None]
 
@@ -181,7 +194,13 @@ def _rounding(matrix: Array, base: Basis) -> Array:
     c = base.species.shape[1]
     unit = np.zeros((len(matrix), matrix.shape[1], c))
     unit[:, np.arange(c), np.arange(c)] = 1.0
-    inverse = solve(matrix, unit)[:, :c]
+    scaled, load, answer, col = _scaled(matrix, unit)
+    if (wild := _wild(answer, load)).any():
+        # The potentials along a singular direction are open; amounts along one do no harm.
+        left, s, right = np.linalg.svd(scaled[wild])
+        floor = np.maximum(s, 1e-18 * s[:, :1])
+        answer[wild] = right.transpose(0, 2, 1) @ ((left.transpose(0, 2, 1) @ load[wild]) / floor[:, :, None])
+    inverse = (answer * col[:, :, None])[:, :c]
     worst: Array = np.abs(base.species @ inverse).sum(axis=2).max(axis=1)
     return worst * _EPS
 
@@ -200,7 +219,7 @@ def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> 
     q: Array = np.zeros_like(d["size"])
     np.put_along_axis(q, index, np.where(valid, move[c:], 0.0), axis=0)
     d["size"] = d["size"] * np.where(q < -0.9, 0.1, 1.0 + q)
-    left: Mask = active & ~((d["size"] < 1e-13 * d["weight"]) & (q < 0.0))
+    left: Mask = active & ~((d["size"] < _GONE * d["weight"]) & (q < 0.0) & ~layout.needed[:, None])
     return left
 
 
@@ -252,7 +271,7 @@ def polish(
     count = d["g"].shape[1]
     span = np.abs(d["g"]).max(axis=0)
     d |= {"tol_e": 1e-12 + 4e-15 * span, "tol_f": 2e-14 * (1.0 + span)}
-    now, live = active.copy(), np.arange(count)
+    now, live = active | layout.needed[:, None], np.arange(count)
     lam, last = d["lam"].copy(), np.zeros_like(active)
     u, n = np.zeros_like(d["g"]), np.zeros_like(d["g"])
     done, rounding = np.zeros(count, dtype=bool), np.zeros(count)

@@ -17,6 +17,7 @@ Mask = NDArray[np.bool_]
 
 _NUDGE = 1e-6
 _REACH = 2.0
+_SPELL = 10
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,7 +84,8 @@ def with_activity(
     Notes
     -----
     Each round solves the convex problem with fixed coefficients and corrects them by Newton's method on the
-    answer's derivatives; the step is halved while the difference grows. Convexity is lost as a whole:
+    answer's derivatives, halved while the difference grows; ten rounds of plain substitution follow ten of
+    these. Convexity is lost as a whole:
     convergence proves a stationary state, `stable` a local minimum.
     """
     g, amounts, levels, room = broadcast(g, amounts, held, gas_volume)
@@ -114,7 +116,9 @@ def with_activity(
             break
         damping = np.where(change > before, np.maximum(0.5 * damping, 0.06), np.minimum(2.0 * damping, 1.0))
         before, rounds = change, rounds + going
-        used = used + np.where(going, damping * np.clip(step, -_REACH, _REACH), 0.0)
+        # Newton's method cannot pass a fold, where the assemblage changes for good; plain substitution can.
+        move = off if turn // _SPELL % 2 else damping * np.clip(step, -_REACH, _REACH)
+        used = used + np.where(going, move, 0.0)
         answer, gain = respond(used, answer)
     moved: Array = np.abs(np.einsum("ijn,jn->in", gain, step)).max(axis=0)
     error: Array = np.where(np.isfinite(change), moved, np.nan)

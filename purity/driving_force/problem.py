@@ -172,6 +172,8 @@ def reduce(
     species = species[order]
     elements = np.flatnonzero(present)
     used = np.flatnonzero(given[:, elements].any(axis=1) & (amounts.max(axis=1) > 0.0))
+    if not len(used):
+        raise IllPosedError("nothing is put in: every amount is zero")
     sub = _rows(formula[np.ix_(species, elements)])
     brings = _rows(given[np.ix_(used, elements)])
     fed: Array = _floored(np.asarray(brings, dtype=float), amounts[used])
@@ -256,8 +258,6 @@ def _posed(
     bare: bool,
 ) -> None:
     """Refuse inputs that the species cannot hold, or can hold only with some species at exactly zero."""
-    if not brings:
-        raise IllPosedError("nothing is put in: every amount is zero")
     names = elements if bare else [_written(row, elements) for row in brings]
     outside = components.check_span(formula, brings, tuple(names), tuple(elements))
     if outside and not bare:
