@@ -20,6 +20,7 @@ thickness where the exponent is one (1/p2, p2): beyond it they run away, and the
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -119,7 +120,7 @@ def _scaled_E2(w: Array) -> Array:
 
 
 def _ln_passed(w: Array, x1: Array) -> Array:
-    """ln of u t at which the film is x1 / w thick."""
+    """Logarithm of u t at which the film is x1 / w thick."""
     return np.asarray(np.log(x1) - np.log(w) - w + np.log(_scaled_E2(w)))
 
 
@@ -151,8 +152,8 @@ def grow(law: str, parameters: Sequence[Curve], x0: Array | float, schedule: Sch
     x = np.atleast_1d(np.asarray(x0, dtype=float))
     for segment in segments(schedule):
         edges = np.array([0.0, 1.0]) if segment.hold else fractions(segment, ramp=RAMP)
-        for start, end in zip(edges[:-1], edges[1:], strict=True):
-            x = _step(law, parameters, x, segment, float(start), float(end))
+        for start, end in pairwise(edges.tolist()):
+            x = _step(law, parameters, x, segment, start, end)
     return x
 
 

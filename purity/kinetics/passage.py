@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from purity.constants import DILUTE
-from purity.kinetics import modes
+from purity.kinetics import laplace, modes
 from purity.kinetics.exposure import Array, ln_at
 from purity.kinetics.modes import CARRY, GAMMA
 from purity.kinetics.pieces import (
@@ -26,11 +26,15 @@ from purity.kinetics.pieces import (
     rates,
     spread,
     surface,
+    take,
+    take_steps,
 )
 from purity.kinetics.stage import Coefficients
 
 #: A part of a schedule that gives more than this share of the uptake must be resolved by the basis.
 MATTERS = 0.01
+#: Rows (impurities x draws) that pass together, so that work arrays stay in the cache.
+ROWS = 4096
 
 
 @dataclass(frozen=True, slots=True)
@@ -246,3 +250,80 @@ def finest(piece: Piece, course: Sequence[Step], *, history: bool = False, least
         if not passage.coarse:
             break
     return passage
+
+
+def is_hold(piece: Piece, course: Sequence[Step]) -> bool:
+    """Tell whether the exact hold applies."""
+    linear = not any(row for row in surface(take(piece, np.zeros(1, dtype=np.int64))).bath.rows)
+    return (
+        piece.profile is None
+        and linear
+        and bool(course)
+        and course[-1].part == course[0].part
+        and course[0].hold
+    )
+
+
+def whole(
+    piece: Piece, course: Sequence[Step], exact: bool, history: bool = False, least: int = 25
+) -> Passage:
+    """All draws, in chunks."""
+    count, draws = piece.x0.shape
+    size = max(64, ROWS // max(count, 1))
+    parts = []
+    for start in range(0, draws, size):
+        chosen = np.arange(start, min(start + size, draws))
+        part, path = (piece, course) if draws <= size else (take(piece, chosen), take_steps(course, chosen))
+        parts.append(hold(part, path) if exact else finest(part, path, history=history, least=least))
+    if len(parts) == 1:
+        return parts[0]
+    deepest = max(part.profile.shape[1] for part in parts)
+    profiles = [_deepen(piece.shape, part.profile, deepest) for part in parts]
+    return Passage(
+        np.concatenate([p.mean for p in parts], axis=-1),
+        np.concatenate([p.film for p in parts], axis=-1),
+        np.concatenate(profiles, axis=-1),
+        np.concatenate([p.ledger for p in parts], axis=-1),
+        np.concatenate([p.flags for p in parts]),
+        np.concatenate([p.attacked for p in parts]),
+        any(p.coarse for p in parts),
+        np.concatenate([p.history for p in parts if p.history is not None], axis=-1) if history else None,
+    )
+
+
+def _deepen(shape: str, profile: Array, count: int) -> Array:
+    if profile.shape[1] == count:
+        return profile
+    return np.asarray(
+        np.einsum("ab,ibn->ian", modes.carry_over(shape, count, shape, profile.shape[1]), profile)
+    )
+
+
+def hold(piece: Piece, course: Sequence[Step]) -> Passage:
+    """The exact hold."""
+    length = np.broadcast_to(np.asarray(sum(step.length for step in course)), piece.x0.shape[1:])
+    step = Step(length, course[0].T1, course[0].T1, 0)
+    path, contact = spread(piece, step), surface(piece)
+    D = path / np.maximum(length, 1e-300)
+    of = coefficients(contact.laws, rates(contact.laws, step, MOST_BI * piece.density * D / piece.R), step.T1)
+    modes_of, g = modes.basis(piece.shape), laplace.GEOMETRY[piece.shape]
+    supply, loss = of.supply.sum(axis=0), of.loss.sum(axis=0)
+    Fo, whole = path / piece.R**2, piece.R**2 / (g * D)
+    Bi = np.clip(loss * whole, laplace.BI_MIN, laplace.BI_MAX)
+    # Written with the flux at the start, so that a ceiling without end needs no number.
+    drive = (supply - loss * piece.x0) * whole / Bi
+    gained = drive * laplace.uptake(piece.shape, Fo, Bi)
+    y = modes.uniform(modes_of, piece.x0) + drive * laplace.amplitudes(
+        piece.shape, Fo, Bi, modes_of.rate, modes_of.surface
+    )
+    y[0] = (piece.x0 + gained) / np.sqrt(g)
+    if len(piece.exposures) > 1:
+        stay = drive * laplace.surface_integral(piece.shape, Fo, Bi) * piece.R**2 / D
+        ledger = (of.supply - of.loss * piece.x0) * length - of.loss * stay
+        ledger[0] += gained - ledger.sum(axis=0)
+    else:
+        ledger = np.broadcast_to(gained, (len(piece.exposures), *gained.shape)).copy()
+    no = np.zeros(piece.x0.shape[1], dtype=bool)
+    top = np.maximum(piece.x0, piece.x0 + drive * laplace.surface_content(piece.shape, Fo, Bi)).max(axis=0)
+    mean = piece.x0 + gained
+    return Passage(mean, np.zeros_like(mean), np.moveaxis(y, 0, 1), ledger, no, top > DILUTE, False, None)

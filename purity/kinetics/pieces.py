@@ -89,7 +89,10 @@ def steps(schedule: Schedule, counts: tuple[int, int, float]) -> tuple[Step, ...
     """Steps of a schedule: holds with growing, ramps with equal lengths."""
     hold, ramp, first = counts
     found = []
-    for part, segment in enumerate(segments(schedule)):
+    parts = segments(schedule)
+    if not parts:
+        return (Step(np.zeros(1), np.asarray(schedule.T[0]), np.asarray(schedule.T[0]), 0),)
+    for part, segment in enumerate(parts):
         edges = fractions(segment, hold=hold, ramp=ramp, first=first)
         T = [segment.T1 + (segment.T2 - segment.T1) * edge for edge in edges]
         T = [segment.T1] * len(edges) if segment.hold else T
@@ -98,18 +101,17 @@ def steps(schedule: Schedule, counts: tuple[int, int, float]) -> tuple[Step, ...
     return tuple(found)
 
 
-def with_skins(exposures: Sequence[Exposure]) -> tuple[tuple[Exposure, ...], tuple[tuple[int, Carrier], ...]]:
+def with_skins(exposures: Sequence[Exposure]) -> tuple[Exposure, ...]:
     """Write skins as carriers of an empty inventory, which they fill by what they take off the surface."""
-    written, found = [], []
-    for s, exposure in enumerate(exposures):
-        skins = [
+    written = []
+    for exposure in exposures:
+        skins = tuple(
             Carrier(skin.name, skin.nu, skin.ln_k, np.ones(1), None, np.zeros(1), limit=SKIN)
             for skin in exposure.skins
             if skin.nu.any()
-        ]
-        found += [(s, skin) for skin in skins]
-        written.append(replace(exposure, carriers=exposure.carriers + tuple(skins), skins=()))
-    return tuple(written), tuple(found)
+        )
+        written.append(replace(exposure, carriers=exposure.carriers + skins, skins=()))
+    return tuple(written)
 
 
 def take(piece: Piece, draws: Index) -> Piece:

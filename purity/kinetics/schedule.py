@@ -182,3 +182,48 @@ def _length(ratio: float, n: int) -> float:
 
 def _stack(rows: list[Array]) -> Array:
     return np.stack(np.broadcast_arrays(*rows))
+
+
+def first_crossing(times: Array, contents: Array, limit: Array | float) -> Array:
+    """Time at which a content first passes a limit, by a cubic through the recorded points.
+
+    Parameters
+    ----------
+    times : (K,) or (K, N) array
+        s.
+    contents : (K, N) array
+    limit : (N,) array
+
+    Returns
+    -------
+    (N,) array
+        s; 0 where the start is at or over the limit, inf where it is never passed.
+    """
+    times = np.broadcast_to(times if times.ndim == 2 else times[:, None], contents.shape)
+    limit = np.broadcast_to(limit, contents.shape[1:])
+    over = contents >= limit
+    k, draws = np.maximum(np.argmax(over, axis=0), 1), np.arange(contents.shape[1])
+    slopes = _slopes(times, contents)
+    t0, t1, c0, c1 = times[k - 1, draws], times[k, draws], contents[k - 1, draws], contents[k, draws]
+    width = t1 - t0
+    m0, m1 = slopes[k - 1, draws] * width, slopes[k, draws] * width
+    low, high = np.zeros(len(draws)), np.ones(len(draws))
+    for _ in range(50):
+        s = 0.5 * (low + high)
+        value = c0 + s * (m0 + s * (3.0 * (c1 - c0) - 2.0 * m0 - m1 + s * (m0 + m1 - 2.0 * (c1 - c0))))
+        low, high = np.where(value < limit, s, low), np.where(value < limit, high, s)
+    found = np.where(over.any(axis=0), t0 + high * width, np.inf)
+    return np.where(over[0], 0.0, found)
+
+
+def _slopes(t: Array, c: Array) -> Array:
+    """Slopes at the points: of the parabola through three, kept from overshooting."""
+    h = np.where(np.diff(t, axis=0) > 0, np.diff(t, axis=0), 1.0)
+    secant = np.diff(c, axis=0) / h
+    if len(secant) < 2:
+        return np.concatenate([secant, secant[-1:]])
+    inner = (h[1:] * secant[:-1] + h[:-1] * secant[1:]) / (h[1:] + h[:-1])
+    least = np.minimum(np.abs(secant[:-1]), np.abs(secant[1:]))
+    same = secant[:-1] * secant[1:] > 0
+    inner = np.where(same, np.sign(inner) * np.minimum(np.abs(inner), 3.0 * least), 0.0)
+    return np.concatenate([2.0 * secant[:1] - inner[:1], inner, 2.0 * secant[-1:] - inner[-1:]])
