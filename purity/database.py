@@ -62,7 +62,11 @@ _Z95 = 1.6448536269514722
 
 @dataclass(frozen=True, slots=True)
 class Found:
-    """A record, its rivals, and how it was come by."""
+    """A record, its rivals, and how it was come by.
+
+    `how` is ``estimate`` only where there was no row and one was made on the spot; a row that a table
+    holds may itself be an estimate (origin, quality D).
+    """
 
     record: Record
     rivals: tuple[Record, ...] = ()
@@ -128,7 +132,7 @@ class Library:
         quantity = quantity_name(table, [key[column] for column in spec.key])
         records = self._index.get(quantity, ())
         if records:
-            return Found(records[0], records[1:], _how(records[0]))
+            return Found(records[0], records[1:], "yours" if records[0].yours else "measured")
         known = tuple(name for name in dict.fromkeys(r.quantity for r in self.tables.get(table, ())))
         return Gap(quantity, f"no record in the table {table}", _nearest(quantity, known))
 
@@ -206,12 +210,6 @@ class Library:
             supply=Still(),
             origin=_origin("atmospheres", found, species),
         )
-
-
-def _how(record: Record) -> How:
-    if record.yours:
-        return "yours"
-    return "estimate" if record.origin == "estimate" else "measured"
 
 
 def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Library:

@@ -110,12 +110,12 @@ def test_an_unknown_preference_is_refused_with_the_nearest() -> None:
         load(prefer=("diffusion:Cu/fcc/Xe=COST507",))
 
 
-def test_an_estimate_is_called_so() -> None:
+def test_an_estimate_in_a_table_is_of_class_d() -> None:
     result = LIBRARY.find("activity", host="Ag", phase="liquid", solute="Ca")
     assert isinstance(result, Found)
     assert result.record.origin == "estimate"
-    assert result.how == "estimate"
     assert result.record.quality == "D"
+    assert result.how == "measured"
 
 
 def test_a_library_does_not_change_and_travels_to_a_worker() -> None:
