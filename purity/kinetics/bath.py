@@ -18,7 +18,7 @@ from itertools import pairwise
 import numpy as np
 
 from purity.constants import DILUTE
-from purity.kinetics import flux_newton, passive
+from purity.kinetics import arrow, flux_newton, passive
 from purity.kinetics.exposure import FLOOR, Array, Exposure, select
 from purity.kinetics.flux_newton import SETTLED, Block, Flags, Point
 from purity.kinetics.passive import GAMMA, GAUSS
@@ -141,6 +141,7 @@ class _Melt:
 
     bath: Bath
     blocks: tuple[Block, ...]
+    plans: tuple[arrow.Plan | None, ...]
     total: Array
     held: Array
     ledger: Array
@@ -232,6 +233,7 @@ def _begin(bath: Bath, total: Array, rates: Coefficients) -> _Melt:
     return _Melt(
         bath=bath,
         blocks=blocks,
+        plans=tuple(arrow.plan(block) for block in blocks),
         total=total.copy(),
         held=np.zeros_like(total),
         ledger=np.zeros((len(bath.exposures), *total.shape)),
@@ -260,7 +262,7 @@ def _move(melt: _Melt, step: Step, first: Rates, last: Rates, live: Index, toler
         points = melt.points if everyone else [point.take(live) for point in melt.points]
         total, stock = melt.total[bath.reactive][:, live], melt.stock[:, live]
         change = reactive_step(
-            Task(bath, melt.blocks, first[0], last[0], total, dt, stock, points, tolerance)
+            Task(bath, melt.blocks, melt.plans, first[0], last[0], total, dt, stock, points, tolerance)
         )
         gained[:, bath.reactive], held[bath.reactive] = change.gained, change.held
         peak = np.maximum(peak, _peak(bath, change.x, live))

@@ -282,7 +282,7 @@ def _step(
         M[c] *= free
         M[c, c] += point.bound[c]
         right[c] = np.where(free, right[c], np.where(free, 0.0, system.most[c]) - flux[c])
-    change = _eliminate(M, right)
+    change = eliminate(M, right)
     flux = flux + change
     dy = q + np.einsum("ucn,cn->un", B, change) * w
     new_y = np.clip(y + np.log1p(np.maximum(dy, 0)) + np.clip(dy, -limit, 0), LOWEST, HIGHEST)
@@ -296,8 +296,8 @@ def _step(
     return Point(new_y, new_p, flux, bound), settled
 
 
-def _eliminate(M: Array, b: Array) -> Array:
-    """Solve M z = b for every draw, in place; M (C, C, N), diagonal positive, no pivoting."""
+def eliminate(M: Array, b: Array) -> Array:
+    """Solve M z = b for every draw, in place; M (C, C, N), b (C, N), diagonal positive, no pivoting."""
     size = len(b)
     for k in range(size - 1):
         f = M[k + 1 :, k] / M[k, k]

@@ -16,11 +16,12 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from purity.kinetics import flux_newton
+from purity.kinetics import arrow, flux_newton
+from purity.kinetics.arrow import Plan
 from purity.kinetics.exposure import Array
 from purity.kinetics.flux_newton import Block, Flags, Point
 from purity.kinetics.passive import GAMMA
-from purity.kinetics.stage import Bath, Coefficients, Index, contents, stage
+from purity.kinetics.stage import Bath, Coefficients, Index, Stage, contents, stage
 
 #: A content below this is nil: rounding may leave it on either side of zero.
 NIL = 1e-24
@@ -88,6 +89,7 @@ class Task:
 
     bath: Bath
     blocks: Sequence[Block]
+    plans: Sequence[Plan | None]
     first: Coefficients
     last: Coefficients
     total: Array
@@ -182,15 +184,31 @@ def _solve(task: Task, c: Coefficients, right: Array, span: Array, most: Array) 
     """Solve one stage; `gained` and `given` are rates."""
     at_stage = stage(c, right, span)
     flux, points, ok = np.zeros_like(most), [], np.ones(len(span), dtype=bool)
-    for block, warm in zip(task.blocks, task.points, strict=True):
-        system = flux_newton.equations(task.bath, block, at_stage, most)
-        point, solved = flux_newton.solve(block, system, warm, task.tolerance)
+    for block, tie, warm in zip(task.blocks, task.plans, task.points, strict=True):
+        point, solved = _solve_block(task, block, tie, at_stage, most, warm)
         flux[block.rows] = point.flux
         points.append(point)
         ok &= solved
     x, gain, held = contents(task.bath, at_stage, flux)
     ok &= np.isfinite(x).all(axis=(0, 1))
     return Change(x, held, gain, np.where(task.bath.skin[:, None], 0.0, flux), flux, points, ok)
+
+
+def _solve_block(
+    task: Task, block: Block, tie: Plan | None, at_stage: Stage, most: Array, warm: Point
+) -> tuple[Point, Flags]:
+    if tie is None:
+        system = flux_newton.equations(task.bath, block, at_stage, most)
+        return flux_newton.solve(block, system, warm, task.tolerance)
+    ties = arrow.system(task.bath, block, tie, at_stage)
+    point, solved = arrow.solve(tie, ties, warm, task.tolerance)
+    if not solved.all():
+        left = np.flatnonzero(~solved)
+        begin = arrow.unfold(block, tie, ties.take(left), warm.take(left))
+        system = flux_newton.equations(task.bath, block, at_stage.take(left), most[:, left])
+        found, solved[left] = flux_newton.solve(block, system, begin, task.tolerance)
+        point.put(left, found)
+    return point, solved
 
 
 def _per_time(left: Array, dt: Array) -> Array:

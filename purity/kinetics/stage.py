@@ -113,6 +113,7 @@ class Stage:
     span : (N,) array
         b = gamma dt, s.
     beta : (I, N) array
+        x of the bath over its right side.
     rest : (L, I, N) array
         Contents without the fluxes of the rows.
     """
@@ -121,6 +122,12 @@ class Stage:
     span: Array
     beta: Array
     rest: Array
+
+    def take(self, draws: Index) -> Stage:
+        """Some draws."""
+        return Stage(
+            self.coefficients.take(draws), self.span[draws], self.beta[:, draws], self.rest[..., draws]
+        )
 
 
 def is_linear(carrier: Carrier) -> bool:
