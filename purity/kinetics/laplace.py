@@ -51,8 +51,9 @@ def impedance(shape: str, s: Complex) -> Complex:
     decay = np.exp(-2.0 * q)
     if shape == "slab":
         return np.asarray((1.0 + decay) / ((1.0 - decay) * q))
-    series = 3.0 / (s * (1.0 - s / 15.0 + 2.0 * s**2 / 315.0 - s**3 / 1575.0))
     small = np.abs(s) < 1e-2
+    near = np.where(small, s, 1.0)
+    series = 3.0 / (near * (1.0 - near / 15.0 + 2.0 * near**2 / 315.0 - near**3 / 1575.0))
     safe = np.where(small, 1.0, q)
     decay = np.exp(-2.0 * safe)
     return np.asarray(np.where(small, series, (1.0 - decay) / (safe * (1.0 + decay) - 1.0 + decay)))
