@@ -20,7 +20,7 @@ Mask = NDArray[np.bool_]
 
 #: Draws solved together: fewer leave the tails of small batches, more leave the cache.
 CHUNK = 4000
-#: Rounding error of ln activity above which the balances are rewritten in the stable compounds.
+#: Rounding error of ln activity or of a balance above which they are rewritten in the stable compounds.
 ROUNDING = 1e-11
 #: Rounding error of ln activity above which a draw is refused.
 UNSURE = 1e-6
@@ -172,7 +172,8 @@ def _recalled(some: Problem, warm: Equilibrium) -> tuple[Array, Array, Mask]:
 
 def _rebase(problem: Problem, out: _Solved) -> None:
     """Rewrite the balances in the stable compounds where rounding would show, and solve once more."""
-    worn = np.flatnonzero((out.start >= 0) & (out.rounding > ROUNDING))
+    shown: Mask = (out.rounding > ROUNDING) | (_residual(problem, out) > ROUNDING)
+    worn = np.flatnonzero((out.start >= 0) & shown)
     if not len(worn):
         return
     edges = np.flatnonzero(np.append(True, np.diff(problem.layout.phase) > 0))
@@ -202,6 +203,12 @@ def _oversaturated(system: System, own: Array, problem: Problem, closed: Mask) -
         members = bare & (system.phase == p)
         over |= np.exp(np.minimum(-own[members], 700.0)).sum(axis=0) >= 1.0
     return over
+
+
+def _residual(problem: Problem, out: _Solved) -> Array:
+    balance: Array = problem.formula.T @ out.n
+    largest: Array = np.abs(balance / problem.total - 1.0).max(axis=0)
+    return largest
 
 
 def _gap(problem: Problem, out: _Solved) -> Array:
@@ -247,8 +254,7 @@ def _assemble(
 ) -> Equilibrium:
     """Put the answer back into the system's own order, with its certificate."""
     draws = own.shape[1]
-    balance: Array = problem.formula.T @ out.n
-    residual: Array = np.abs(balance / problem.total - 1.0).max(axis=0)
+    residual = _residual(problem, out)
     gap = _gap(problem, out)
     proved = (out.start >= 0) & (np.abs(gap) < CERTIFIED) & (residual < CERTIFIED)
     proved &= out.rounding <= UNSURE
