@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from purity.kinetics.exposure import Array
-from purity.kinetics.flux_newton import HIGHEST, LEAST_ACTIVITY, LOWEST, Block, Flags, Point, eliminate
+from purity.kinetics.flux_newton import HIGHEST, LEAST_ACTIVITY, LOWEST, Block, Flags, Point, eliminate, weigh
 from purity.kinetics.stage import Bath, Index, Stage, response
 
 #: Longest fall of a logarithm in a pass, and passes.
@@ -247,12 +247,12 @@ def solve(tie: Plan, equations: System, warm: Point, tolerance: float) -> tuple[
 
 def _step(tie: Plan, part: System, z: Array, at: Fluxes) -> tuple[Array, Flags]:
     x = np.exp(z)
-    total = np.einsum("stn,tn->sn", part.hub, tie.atoms @ at.flux)
-    J = part.hub * (tie.atoms @ at.slope)
+    total = np.einsum("stn,tn->sn", part.hub, weigh(tie.atoms, at.flux))
+    J = part.hub * weigh(tie.atoms, at.slope)
     every = np.arange(len(z))
     J[every, every] += x
     step = eliminate(J, part.rest[tie.hub] + total - x)
-    rough = np.einsum("stn,tn->sn", part.hub, tie.atoms @ at.load) / x
+    rough = np.einsum("stn,tn->sn", part.hub, weigh(tie.atoms, at.load)) / x
     sound = rough.max(axis=0) * ROUNDING < CANCELS
     for k, leaf in enumerate(tie.leaves):
         if not leaf.wall:
@@ -268,7 +268,7 @@ def unfold(block: Block, tie: Plan, equations: System, point: Point) -> Point:
         y = point.y.copy()
         for leaf, x in zip(tie.leaves, at.leaves, strict=True):
             y[leaf.unknown] = np.log(x)
-        p = block.nu[block.film] @ y - equations.ln_law[block.film]
+        p = weigh(block.nu[block.film], y) - equations.ln_law[block.film]
     sane = np.isfinite(y).all(axis=0) & np.isfinite(p).all(axis=0)
     y, p = np.where(sane, y, point.y), np.where(sane, p, point.p)
     return Point(np.clip(y, LOWEST, HIGHEST), np.clip(p, LOWEST, HIGHEST), point.flux, point.bound)

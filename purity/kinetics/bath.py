@@ -28,6 +28,7 @@ from purity.kinetics.sdirk import step as reactive_step
 from purity.kinetics.stage import Bath, Coefficients, Index, coefficients, lay_out
 
 Rates = tuple[Coefficients, Coefficients]
+Live = Index | slice
 
 
 @dataclass(frozen=True, slots=True)
@@ -212,9 +213,8 @@ def integrate(case: Case, *, nodes: int = 32, history: bool = False, tolerance: 
             first = last = held[1]
         else:
             first, last = coefficients(bath, step.at(GAMMA)), coefficients(bath, step.T1)
-        live = np.flatnonzero(~np.isfinite(melt.crossed))
-        if len(live):
-            _move(melt, step, first, last, live, tolerance)
+        if not np.isfinite(melt.crossed).all():
+            _move(melt, step, first, last, tolerance)
         times.append(step.start + step.dt)
         if history:
             melt.record.append(melt.total.copy())
@@ -249,36 +249,37 @@ def _begin(bath: Bath, total: Array, rates: Coefficients) -> _Melt:
     )
 
 
-def _move(melt: _Melt, step: Step, first: Rates, last: Rates, live: Index, tolerance: float) -> None:
+def _move(melt: _Melt, step: Step, first: Rates, last: Rates, tolerance: float) -> None:
     """Take one step with the draws that are not attacked."""
-    bath, everyone = melt.bath, len(live) == melt.bath.draws
+    bath, attacked = melt.bath, np.isfinite(melt.crossed)
+    live: Live = slice(None)
+    if attacked.any():
+        live = np.flatnonzero(~attacked)
+        first, last = _take(first, live), _take(last, live)
     dt = np.broadcast_to(step.dt, (bath.draws,))[live]
-    if not everyone:
-        first, last = (_take(rates, live) for rates in (first, last))
-    gained = np.zeros((len(bath.exposures), len(melt.total), len(live)))
-    peak, held = np.full(len(live), FLOOR), np.zeros((len(melt.total), len(live)))
+    gained = np.zeros((len(bath.exposures), len(melt.total), len(dt)))
+    peak, held = np.full(len(dt), FLOOR), np.zeros((len(melt.total), len(dt)))
     change: Change | None = None
     if len(bath.reactive):
-        points = melt.points if everyone else [point.take(live) for point in melt.points]
+        points = [point.take(live) for point in melt.points] if attacked.any() else melt.points
         total, stock = melt.total[bath.reactive][:, live], melt.stock[:, live]
-        change = reactive_step(
-            Task(bath, melt.blocks, melt.plans, first[0], last[0], total, dt, stock, points, tolerance)
-        )
+        task = Task(bath, melt.blocks, melt.plans, first[0], last[0], total, dt, stock, points, tolerance)
+        change = reactive_step(task)
         gained[:, bath.reactive], held[bath.reactive] = change.gained, change.held
         peak = np.maximum(peak, _peak(bath, change.x, live))
     if len(bath.passive):
         x = melt.total[bath.passive][:, live]
         keep, gain, gained[:, bath.passive] = _passive(bath, step, first[1], last[1], x, dt, live)
+        if not len(bath.reactive):
+            melt.gain[:, live] = keep * melt.gain[:, live] + gain
+            melt.keep[:, live] *= keep
         after = keep * x + gain
-        melt.keep[np.ix_(bath.passive, live)] *= keep
-        melt.gain[np.ix_(bath.passive, live)] *= keep
-        melt.gain[np.ix_(bath.passive, live)] += gain
         peak = np.maximum(peak, _peak(bath, last[1].phi * after + last[1].rest, live))
     _count(melt, step, live, change, gained, held, peak)
 
 
 def _passive(
-    bath: Bath, step: Step, first: Coefficients, last: Coefficients, x: Array, dt: Array, live: Index
+    bath: Bath, step: Step, first: Coefficients, last: Coefficients, x: Array, dt: Array, live: Live
 ) -> tuple[Array, Array, Array]:
     if step.hold:
         return passive.hold(last, x, dt)
@@ -290,18 +291,18 @@ def _passive(
     return passive.ramp(first, last, x, dt, between)
 
 
-def _take(rates: Rates, draws: Index) -> Rates:
+def _take(rates: Rates, draws: Live) -> Rates:
     return rates[0].take(draws), rates[1].take(draws)
 
 
-def _peak(bath: Bath, x: Array, live: Index) -> Array:
+def _peak(bath: Bath, x: Array, live: Live) -> Array:
     """Largest content in the bath or at a contact that has an area."""
-    touched = np.concatenate([np.ones((1, len(live)), dtype=bool), bath.area[:, live] > 0])
+    touched = np.concatenate([np.ones((1, x.shape[-1]), dtype=bool), bath.area[:, live] > 0])
     return np.asarray(np.where(touched, x.max(axis=1, initial=FLOOR), FLOOR).max(axis=0))
 
 
 def _count(
-    melt: _Melt, step: Step, live: Index, change: Change | None, gained: Array, held: Array, peak: Array
+    melt: _Melt, step: Step, live: Live, change: Change | None, gained: Array, held: Array, peak: Array
 ) -> None:
     """Add a step, up to the time at which a content leaves the dilute range."""
     reactive = melt.bath.reactive
@@ -323,8 +324,11 @@ def _count(
             empty = point.bound & block.stock[:, None] & ~out
             stock[block.rows] = np.where(empty, 0.0, stock[block.rows])
         melt.stock[:, live] = stock
-        for point, new in zip(melt.points, change.points, strict=True):
-            point.put(live, new)
+        if isinstance(live, slice):
+            melt.points = change.points
+        else:
+            for point, new in zip(melt.points, change.points, strict=True):
+                point.put(live, new)
     melt.total[:, live] = np.maximum(after, 0.0)
     melt.held[:, live] += share * (held - melt.held[:, live])
     melt.ledger[..., live] += share * gained

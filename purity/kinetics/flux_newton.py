@@ -89,7 +89,7 @@ class Point:
     flux: Array
     bound: Flags
 
-    def take(self, draws: Index | Flags) -> Point:
+    def take(self, draws: Index | Flags | slice) -> Point:
         """Some draws."""
         return Point(self.y[:, draws], self.p[:, draws], self.flux[:, draws], self.bound[:, draws])
 
@@ -198,7 +198,7 @@ def start(block: Block, coefficients: Coefficients, total: Array) -> Point:
     rows = block.rows[block.film]
     with np.errstate(divide="ignore"):
         ln_a = np.log(coefficients.activity[rows])
-    p = block.nu[block.film] @ y - coefficients.ln_k[rows]
+    p = weigh(block.nu[block.film], y) - coefficients.ln_k[rows]
     p = np.where(ln_a > -np.inf, np.minimum(p, ln_a), p)
     shape = (len(block.rows), total.shape[-1])
     return Point(y, p, np.zeros(shape), np.broadcast_to(block.skin[:, None], shape).copy())
@@ -269,8 +269,8 @@ def _step(
     w = np.exp(-y)
     q = (system.rest + np.einsum("ucn,cn->un", B, flux)) * w - 1
     size = (system.rest + np.einsum("ucn,cn->un", B, np.abs(flux))) * w
-    M = (nu @ (B * w[:, None]).reshape(len(y), -1)).reshape(len(nu), *flux.shape)
-    right = system.ln_k - nu @ (y + q)
+    M = weigh(nu, B * w[:, None])
+    right = system.ln_k - weigh(nu, y + q)
     wall = np.ones(len(nu), dtype=bool)
     wall[film] = False
     right[wall] += system.ln_a[wall]
@@ -294,6 +294,19 @@ def _step(
     if len(film):
         settled &= np.abs(noise_free).max(axis=0) < tolerance
     return Point(new_y, new_p, flux, bound), settled
+
+
+def weigh(nu: Array, values: Array) -> Array:
+    """Sum nu_cu values_u over u.
+
+    Most of nu is 0, so this beats a dense product, and its rounding does not hang on the number of draws.
+    """
+    total: Array = np.zeros((len(nu), *values.shape[1:]))
+    for c, row in enumerate(nu.tolist()):
+        for u, atoms in enumerate(row):
+            if atoms:
+                total[c] += values[u] if atoms == 1 else atoms * values[u]
+    return total
 
 
 def eliminate(M: Array, b: Array) -> Array:
@@ -334,7 +347,7 @@ def _new_p(
     film = block.film
     dp = (system.activity - flux[film] * system.resistance) * inverse - 1
     p = point.p + np.log1p(np.maximum(dp, 0)) + np.clip(dp, -limit, 0)
-    law = block.nu[film] @ y - system.ln_k[film]
+    law = weigh(block.nu[film], y) - system.ln_k[film]
     idle = point.bound[film]
     p = np.clip(np.where((system.activity * inverse > CANCELS_ACTIVITY) | idle, law, p), LOWEST, HIGHEST)
     return p, np.where(idle, 0.0, p - point.p)
@@ -348,7 +361,7 @@ def _bounds(block: Block, system: Equations, y: Array, flux: Array, bound: Flags
     bound = bound.copy()
     film = {int(c): f for f, c in enumerate(block.film)}
     for c in block.bounded:
-        law = block.nu[c] @ y - system.ln_k[c]
+        law = weigh(block.nu[c : c + 1], y)[0] - system.ln_k[c]
         if int(c) in film:
             f = film[int(c)]
             falls = system.activity[f] - np.exp(law) < system.most[c] * system.resistance[f]

@@ -99,7 +99,7 @@ class Coefficients:
     activity: Array
     resistance: Array
 
-    def take(self, draws: Index) -> Coefficients:
+    def take(self, draws: Index | slice) -> Coefficients:
         """Some draws."""
         return Coefficients(*(getattr(self, name)[..., draws] for name in self.__slots__))
 
