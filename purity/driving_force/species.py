@@ -17,6 +17,7 @@ from purity.driving_force.substances import (
     atoms,
     found,
     gibbs_energy,
+    ln_dissolution,
     solute,
     substances,
 )
@@ -208,12 +209,30 @@ def gibbs(selection: Selection, library: Library, T: ArrayLike, draws: Draws) ->
         Without dimension.
     """
     t = np.asarray(T, dtype=float)
-    energies = []
-    for one in selection.species:
-        if one.state in ("host", "dissolved"):
-            energy = solute(library, selection.host, selection.phase, one.formula, t, draws)
-        else:
-            energy = gibbs_energy(library, one.formula, one.state, t, draws)
-        assert isinstance(energy, Energy), one.name
-        energies.append(energy.value / (R * t))
-    return np.stack(np.broadcast_arrays(*energies))
+    return np.stack(
+        np.broadcast_arrays(*(_over_rt(selection, library, s, t, draws) for s in selection.species))
+    )
+
+
+def _over_rt(selection: Selection, library: Library, one: Species, t: Array, draws: Draws) -> Array:
+    metal = (library, selection.host, selection.phase)
+    if one.state in ("host", "dissolved"):
+        return _value(solute(*metal, one.formula, t, draws)) / (R * t)
+    if one.state == "solid" and _saturation_measured(selection, library, one.formula):
+        # A measured saturation that wins moves the compound, so that both ways to a ceiling give one answer.
+        parts = (n * _value(solute(*metal, e, t, draws)) / (R * t) for e, n in atoms(one.formula).items())
+        return np.asarray(sum(parts, _value(ln_dissolution(*metal, one.formula, "solid", t, draws))))
+    return _value(gibbs_energy(library, one.formula, one.state, t, draws)) / (R * t)
+
+
+def _saturation_measured(selection: Selection, library: Library, formula: str) -> bool:
+    host, phase = selection.host, selection.phase
+    solutes = set(atoms(formula)) - {host}
+    return len(solutes) == 1 and any(
+        library.rivals(f"solubility:{host}/{phase}/{element}/{formula}") for element in solutes - {formula}
+    )
+
+
+def _value(energy: Energy | Gap) -> Array:
+    assert isinstance(energy, Energy), energy
+    return energy.value
