@@ -201,7 +201,7 @@ def _solve(
     case: Case,
     chosen: Selection,
     given: list[str],
-    amounts: Mapping[str, float],
+    amounts: dict[str, float],
     levels: Mapping[str, Array],
 ) -> tuple[Selection, Equilibrium] | str:
     """Bring wall and metal to rest under 1 bar, so that a gas forms where bubbles could.
