@@ -23,7 +23,7 @@ from typing import Literal
 from purity.constants import ATM
 from purity.errors import DataError, Fault, OutOfRangeError
 from purity.scenario import Atmosphere, Given, Material, Still, exact
-from purity.table_files import DATA, check, file_hashes, read_folder, verify
+from purity.table_files import DATA, check, file_hashes, lay_over, read_folder, verify
 from purity.tables import (
     TABLES,
     Record,
@@ -247,17 +247,10 @@ def load(overlay: Path | str | None = None, prefer: tuple[str, ...] = ()) -> Lib
         own, own_sources, _ = read_folder(folder, yours=True)
         put = {record.quantity for rows in own.values() for record in rows if record.rank > 0}
         withdrawn = frozenset(r.quantity for rows in own.values() for r in rows if r.rank == 0) - put
-        tables = {name: _laid_over(tables.get(name, ()), own.get(name, ())) for name in TABLES}
+        tables = {name: lay_over(tables.get(name, ()), own.get(name, ())) for name in TABLES}
         sources = {**sources, **own_sources}
         digest.update("".join(f"{n}{h}" for n, h in file_hashes(folder).items()).encode())
     return _library(tables, sources, digest.hexdigest(), prefer, withdrawn)
-
-
-def _laid_over(base: Iterable[Record], own: Iterable[Record]) -> tuple[Record, ...]:
-    own = tuple(own)
-    replaced = {record.quantity for record in own}
-    kept = [record for record in base if record.quantity not in replaced]
-    return (*kept, *(record for record in own if record.rank > 0))
 
 
 def _library(

@@ -26,6 +26,11 @@ DATA = Path(__file__).with_name("data")
 ORIGINS = ("looked-up", "memory", "derived", "computed", "estimate")
 #: Tables whose rows of one quantity are held against each other.
 COMPARED = ("solubility", "sieverts", "activity")
+#: Tables whose rows of one group add up: the group, the column and the sum (10 % may stand in traces).
+SUMS: Mapping[str, tuple[str, str, float]] = {
+    "containers": ("material", "mass_fraction", 1.0),
+    "atmospheres": ("atmosphere", "fraction_ppm_mol", 1e6),
+}
 #: Columns that a table may do without.
 OPTIONAL = ("rank", "note")
 SOURCE_COLUMNS = ("key", "citation", "address", "origin")
@@ -279,7 +284,20 @@ def check(folder: Path) -> list[Fault]:
     for key in sorted(set(sources) & set(known)):
         place = f"{sources[key]['file']}: {key}"
         faults.append(Fault(int(sources[key]["line"]), place, "is a source of the package: use another key"))
-    return sorted([*faults, *_faults(tables, {**known, **sources}, _melting({**base, **tables}))])
+    faults += _faults(tables, {**known, **sources}, _melting({**base, **tables}))
+    for table, (group, _, _) in SUMS.items():
+        own = {record.words[group] for record in tables.get(table, ())}
+        merged = lay_over(base.get(table, ()), tables.get(table, ()))
+        faults += _sum_faults([r for r in merged if r.words[group] in own], table)
+    return sorted(faults)
+
+
+def lay_over(base: Iterable[Record], own: Iterable[Record]) -> tuple[Record, ...]:
+    """Return the records of a table with a user's own in place of those they replace or remove."""
+    own = tuple(own)
+    replaced = {record.quantity for record in own}
+    kept = [record for record in base if record.quantity not in replaced]
+    return (*kept, *(record for record in own if record.rank > 0))
 
 
 def verify(folder: Path = DATA) -> list[Fault]:
@@ -291,21 +309,21 @@ def verify(folder: Path = DATA) -> list[Fault]:
     for key in sorted(set(sources) - used):
         place = f"{sources[key]['file']}: {key}"
         faults.append(Fault(int(sources[key]["line"]), place, "no row names this source"))
-    faults += _sum_faults(tables.get("containers", ()), "material", "mass_fraction", 1.0)
-    faults += _sum_faults(tables.get("atmospheres", ()), "atmosphere", "fraction_ppm_mol", 1e6)
+    for table in SUMS:
+        faults += _sum_faults(tables.get(table, ()), table)
     return sorted([*faults, *_hash_faults(folder)])
 
 
-def _sum_faults(records: Iterable[Record], group: str, column: str, total: float) -> list[Fault]:
+def _sum_faults(records: Iterable[Record], table: str) -> list[Fault]:
+    group, column, total = SUMS[table]
     sums: defaultdict[str, float] = defaultdict(float)
     line: dict[str, int] = {}
-    table = ""
     for record in records:
-        table = f"{record.table}.csv"
         sums[record.words[group]] += record.fields[column]
-        line.setdefault(record.words[group], record.line)
+        if record.yours or record.words[group] not in line:
+            line[record.words[group]] = record.line
     return [
-        Fault(line[name], f"{table}: {name}", f"{column} sums to {found:g} in place of {total:g}")
+        Fault(line[name], f"{table}.csv: {name}", f"{column} sums to {found:g} in place of {total:g}")
         for name, found in sums.items()
         if not 0.9 <= found / total <= 1.005
     ]

@@ -229,6 +229,22 @@ def test_a_users_material_is_named_by_file_and_line(folder: Path) -> None:
     assert material.phases == {"MgO": 0.99}
 
 
+def test_the_shares_of_a_users_material_add_up(folder: Path) -> None:
+    head = "material,formula,mass_fraction,title,aliases,rank,source,where,origin,note\n"
+    write(folder, "magnesia,CaO,0.4,,,,ours,,looked-up,\n", "containers.csv", head)
+    assert check(folder) == [
+        Fault(2, "containers.csv: magnesia", check(folder)[0].text),
+    ]
+    assert "sums to 1.3" in check(folder)[0].text
+    write(
+        folder,
+        "magnesia,CaO,0.4,,,,ours,,looked-up,\nmagnesia,MgO,0.6,,,,ours,,looked-up,\n",
+        "containers.csv",
+        head,
+    )
+    assert check(folder) == []
+
+
 GOOD = "Cu,fcc,O,1.2e-6,68,900,1300,1.2,,ours,run 12,looked-up,\n"
 
 
