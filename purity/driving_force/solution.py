@@ -240,7 +240,7 @@ def curvature(model: Model, x_a: ArrayLike, x_b: ArrayLike, T: ArrayLike) -> Arr
 
 
 def _bracketed(
-    function: Callable[[Array], tuple[Array, Array]], low: Array, high: Array, start: Array
+    function: Callable[[Array], tuple[Array, Array]], low: Array, high: Array, start: Array, scale: ArrayLike
 ) -> Array:
     """Root of an increasing function by Newton's method kept inside a shrinking bracket."""
     low, high, at = low.copy(), high.copy(), start.copy()
@@ -249,10 +249,10 @@ def _bracketed(
         low, high = np.where(value < 0.0, at, low), np.where(value > 0.0, at, high)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             trial: Array = at - value / rate
-        inside = (trial > low) & (trial < high) & np.isfinite(trial)
+        inside = (trial > low) & (trial < high)
         new: Array = np.where(inside, trial, 0.5 * (low + high))
         new = np.where(value == 0.0, at, new)
-        still = np.abs(new - at) > 4e-16 * np.abs(new)
+        still = np.abs(new - at) > 4e-16 * np.maximum(np.abs(new), scale)
         at = new
         if not still.any():
             break
@@ -292,8 +292,8 @@ def spinodal(model: SubRegular, T: ArrayLike) -> tuple[Array, Array]:
         return -value, -rate
 
     unstable = scaled(lowest)[0] < 0.0
-    left = _bracketed(fallen, np.zeros_like(lowest), lowest, 0.5 * lowest)
-    right = _bracketed(scaled, lowest, np.ones_like(lowest), 0.5 * (1.0 + lowest))
+    left = _bracketed(fallen, np.zeros_like(lowest), lowest, 0.5 * lowest, 0.0)
+    right = _bracketed(scaled, lowest, np.ones_like(lowest), 0.5 * (1.0 + lowest), 0.0)
     return np.where(unstable, left, np.nan), np.where(unstable, right, np.nan)
 
 
@@ -344,7 +344,7 @@ def miscibility_gap(model: SubRegular, T: ArrayLike) -> tuple[Array, Array]:
         width: Array = -np.expm1(w) - np.exp(u)
         return in_host - beyond, width
 
-    s = _bracketed(difference, bottom, top, 0.5 * (bottom + top))
+    s = _bracketed(difference, bottom, top, 0.5 * (bottom + top), R * t)
     u, w = contents(s)
     return np.where(gap, np.exp(u), np.nan), np.where(gap, np.exp(w), np.nan)
 
@@ -358,7 +358,7 @@ def _branch(model: SubRegular, s: Array, end: Array, T: Array) -> Array:
         x = np.exp(u)
         return slope(model, -np.expm1(u), x, T) - s, curvature(model, -np.expm1(u), x, T) * x
 
-    return _bracketed(surplus, floor, end, np.maximum(end - 1.0, floor))
+    return _bracketed(surplus, floor, end, np.maximum(end - 1.0, floor), 1.0)
 
 
 def wagner(ln_gamma_inf: Array, epsilon: Array, x: Array) -> Array:

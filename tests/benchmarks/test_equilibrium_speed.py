@@ -1,6 +1,7 @@
 """Speed of contact equilibria, alone and against Cantera's vcs solver on the same contacts.
 
-Run with ``pytest --benchmark-only tests/benchmarks``. One BLAS thread (OPENBLAS_NUM_THREADS=1).
+Run with ``pytest --benchmark-only tests/benchmarks``, one BLAS thread (OPENBLAS_NUM_THREADS=1). Processor
+time is measured, so that other work on the machine counts less.
 """
 
 from __future__ import annotations
@@ -30,18 +31,23 @@ def _shared() -> ModuleType:
 
 cs = _shared()
 NAMES = sorted(cs.CONTACTS)
+processor_time = pytest.mark.benchmark(timer=time.process_time)
 
 
-def seconds_outside(name: str, draws: int) -> float:
-    """Mean time of one vcs solve with energies of its own, as a Monte Carlo run needs it."""
+def seconds_outside(name: str, draws: int) -> tuple[float, float]:
+    """Mean times of loading a draw's own energies, as a Monte Carlo run must, and of one vcs solve."""
     outside, (g, amounts) = cs.Outside(name), cs.mild(name, draws, 5)
-    start = time.perf_counter()
+    load = solve = 0.0
     for k in range(draws):
+        start = time.process_time()
         outside.load(g[:, k])
+        middle = time.process_time()
         outside.solve(amounts[:, k])
-    return (time.perf_counter() - start) / draws
+        load, solve = load + middle - start, solve + time.process_time() - middle
+    return load / draws, solve / draws
 
 
+@processor_time
 @pytest.mark.parametrize("name", NAMES)
 def test_one_solve_takes_milliseconds(benchmark: BenchmarkFixture, name: str) -> None:
     made, (g, amounts) = cs.setup(name), cs.nominal(name)
@@ -50,6 +56,7 @@ def test_one_solve_takes_milliseconds(benchmark: BenchmarkFixture, name: str) ->
         assert benchmark.stats.stats.min < 15e-3
 
 
+@processor_time
 def test_ten_thousand_draws_are_four_times_faster_than_vcs(benchmark: BenchmarkFixture) -> None:
     drawn = {name: cs.mild(name, 10_000, 5) for name in NAMES}
 
@@ -60,15 +67,15 @@ def test_ten_thousand_draws_are_four_times_faster_than_vcs(benchmark: BenchmarkF
             assert (answer.state != Outcome.REFUSED).all()
 
     benchmark.pedantic(every, rounds=3, warmup_rounds=1)
-    outside = min(np.mean([seconds_outside(name, 200) for name in NAMES]) for _ in range(2))
-    benchmark.extra_info["vcs_us"] = 1e6 * outside
+    load, solve = np.mean([seconds_outside(name, 200) for name in NAMES], axis=0)
     if benchmark.stats is not None:
         ours = benchmark.stats.stats.min / (10_000 * len(NAMES))
-        benchmark.extra_info |= {"ours_us": 1e6 * ours, "ratio": outside / ours}
-        print(f"ours {1e6 * ours:.0f} us, vcs {1e6 * outside:.0f} us a solve: {outside / ours:.1f} times")
-        assert outside > 4.0 * ours
+        benchmark.extra_info |= {"ours": ours, "vcs_load": load, "vcs_solve": solve}
+        print(f"us a draw: ours {1e6 * ours:.0f}, vcs {1e6 * load:.0f} to load, {1e6 * solve:.0f} to solve")
+        assert load + solve > 4.0 * ours
 
 
+@processor_time
 @pytest.mark.parametrize("name", NAMES)
 def test_twenty_thousand_wild_draws_all_end_with_a_proof(benchmark: BenchmarkFixture, name: str) -> None:
     made, (g, amounts) = cs.setup(name), cs.wild(name, 20_000, 4711)
