@@ -17,6 +17,7 @@ from purity.database import Found, Gap, Library, ln_value, phase_at
 from purity.draws import Draws
 from purity.driving_force.solution import Dilute, mixing
 from purity.driving_force.substances import (
+    REFERENCES,
     Energy,
     atoms,
     element_energy,
@@ -166,18 +167,16 @@ def affinity(
         near = f"; nearest: {', '.join(gas.nearest)}" if gas.nearest else ""
         raise OutOfRangeError(f"{gas.reason}: {atmosphere!r}{near}")
     case = Case(library, host, phase, impurity, T, draws)
-    sources = _sources(case)
     saturations = _saturations(case)
     made = solute(library, host, phase, impurity, T, draws)
-    record = solute_record(library, host, phase, impurity)
-    ln = band(_ln_gamma(case, record)) if isinstance(record, Found) else None
+    sources = _sources(case, made)
     return Affinity(
         host=host,
         impurity=impurity,
         T=T,
         phase=phase,
         activity=sources[0] if sources else None,
-        ln_gamma=ln,
+        ln_gamma=_ln_gamma(case, made),
         rivals=sources[1:],
         extrapolated=isinstance(made, Energy) and bool(made.outside.any()),
         contents=_contents(case),
@@ -189,22 +188,35 @@ def affinity(
     )
 
 
-def _ln_gamma(case: Case, record: Found) -> Array:
-    """Return ln gamma per draw; of a Sieverts constant, against half the molecule at 1 bar."""
-    if record.record.table == "activity":
-        return ln_gamma(record, case.T, case.draws)
-    dissolved = solute(case.library, case.host, case.phase, case.impurity, case.T, case.draws)
-    gas = gibbs_energy(case.library, f"{case.impurity}2", "gas", case.T, case.draws)
-    assert isinstance(dissolved, Energy)
-    assert isinstance(gas, Energy)
-    return np.asarray((dissolved.value - 0.5 * gas.value) / (R * case.T))
-
-
-def _sources(case: Case) -> tuple[Source, ...]:
+def _sources(case: Case, made: Energy | Gap) -> tuple[Source, ...]:
+    """Return what the energy of the dissolved impurity rests on, then its rivals."""
     best = solute_record(case.library, case.host, case.phase, case.impurity)
-    if isinstance(best, Gap):
-        return ()
-    return tuple(_source(case, Found(r, (), best.how)) for r in (best.record, *best.rivals))
+    records = () if isinstance(best, Gap) else (best.record, *best.rivals)
+    rows = tuple(_source(case, Found(r, (), best.how)) for r in records if isinstance(best, Found))
+    if isinstance(made, Gap) or made.found[0].record.table != "solubility":
+        return rows
+    record = made.found[0].record
+    ln = _over(case, made, gibbs_energy(case.library, case.impurity, "solid", case.T, case.draws))
+    words = (made.found[0].how, record.quality, record.source, record.where)
+    return (Source(float(np.median(ln)), record.spread, "pure solid, by its saturation", *words), *rows)
+
+
+def _ln_gamma(case: Case, made: Energy | Gap) -> Band | None:
+    """Return ln gamma against the reference of the first source."""
+    record = solute_record(case.library, case.host, case.phase, case.impurity)
+    if isinstance(made, Gap):
+        return None
+    state, formula, share = "solid", case.impurity, 1.0
+    if made.found[0].record.table == "sieverts":
+        state, formula, share = "gas", f"{case.impurity}2", 0.5
+    elif made.found[0].record.table == "activity" and isinstance(record, Found):
+        state = REFERENCES[record.record.words["reference"]]
+    return band(_over(case, made, gibbs_energy(case.library, formula, state, case.T, case.draws), share))
+
+
+def _over(case: Case, made: Energy, reference: Energy | Gap, share: float = 1.0) -> Array:
+    assert isinstance(reference, Energy)
+    return np.asarray((made.value - share * reference.value) / (R * case.T))
 
 
 def _source(case: Case, found: Found) -> Source:

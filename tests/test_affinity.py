@@ -148,6 +148,28 @@ def test_what_is_not_known_is_said(library: Library) -> None:
         affinity(library, "Cu", "Al", 1473.15, atmosphere="argn N5.0", against=())
 
 
+def test_a_measured_saturation_is_named_before_the_estimate_it_replaces(library: Library) -> None:
+    row = next(
+        r
+        for r in library.rows("solubility")
+        if r.words["with"] == r.words["solute"]
+        and not isinstance(
+            found := library.find("activity", **{k: r.words[k] for k in ("host", "phase", "solute")}), Gap
+        )
+        and found.record.origin == "estimate"
+        and r.fields["limit_ppm_mass"] < 1000
+    )
+    host, phase, element = (row.words[k] for k in ("host", "phase", "solute"))
+    made = affinity(library, host, element, row.fields["T_K"], phase=phase, against=(), draws=DRAWS)
+    assert made.activity is not None
+    assert made.ln_gamma is not None
+    assert made.activity.source == row.source
+    assert made.rivals[0].how in ("estimate", "measured")
+    assert made.ln_gamma.median == pytest.approx(made.activity.ln_gamma, abs=0.1)
+    first = next(s for s in made.saturations if s.formula == element)
+    assert first.measured == pytest.approx(row.fields["limit_ppm_mass"], rel=0.02)
+
+
 def test_an_estimate_is_marked(library: Library) -> None:
     made = affinity(library, "In", "Cr", 773.15, phase="liquid", against=(), draws=DRAWS)
     assert made.activity is not None

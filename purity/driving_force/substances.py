@@ -229,7 +229,7 @@ def ln_dissolution(
         Without dimension.
     """
     computed = _ln_computed(library, host, phase, formula, state, T, draws)
-    chosen = computed if state == "gas" else reconcile(library, host, phase, formula, T, draws, computed)
+    chosen = computed if state != "solid" else reconcile(library, host, phase, formula, T, draws, computed)
     if isinstance(chosen, Gap):
         return chosen
     shift = atoms(formula).get(host, 0.0) * np.log(activity_of_host)
@@ -296,7 +296,8 @@ def measured_ceiling(
     published = np.log(share / (1.0 - share) * host_mass / mass)
     base, own, scatter = _own(library, host, phase, element, with_, t, at)
     off = published - own
-    doubt = np.abs(off) > CONFLICT * np.hypot(scatter, spread)
+    known = np.ndim(base) > 0
+    doubt = known & (np.abs(off) > CONFLICT * np.hypot(scatter, spread))
     bound = np.array(["upper bound" in record.words["note"] for record in points])
     nearest = np.abs(1.0 / t[..., np.newaxis] - 1.0 / at).argmin(axis=-1)
     sigma = np.hypot(spread[nearest], SLOPE * np.abs(1.0 / t - 1.0 / at[nearest]))
@@ -309,9 +310,9 @@ def measured_ceiling(
         value,
         np.broadcast_to(base + deviation, value.shape),
         np.broadcast_to(sigma, value.shape),
-        np.broadcast_to(deviation if np.ndim(base) else np.zeros(()), value.shape),
+        np.broadcast_to(deviation if known else np.zeros(()), value.shape),
         conflict,
-        conflict | estimated,
+        conflict | (estimated or not known),
         found(library, points[int(np.ravel(nearest)[0])]),
     )
 

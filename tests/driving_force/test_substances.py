@@ -287,6 +287,15 @@ def test_what_agrees_is_left_alone(library: Library) -> None:
     assert isinstance(measured_ceiling(library, "Cu", "liquid", "Al", "Al2O3", 1473.0, DRAWS), Gap)
 
 
+def test_where_nothing_can_be_computed_the_measurement_stands_without_conflict(library: Library) -> None:
+    measured = measured_ceiling(library, "Cu", "fcc", "C", "C", 1273.0, DRAWS)
+    assert not isinstance(measured, Gap)
+    assert not measured.conflict.any()
+    assert measured.wins.all()
+    made = energy(ln_dissolution(library, "Cu", "fcc", "C", "solid", 1273.0, DRAWS))
+    assert made.found[0].record.table == "solubility"
+
+
 def test_a_user_row_takes_over_with_the_same_stream(library: Library) -> None:
     rows = library.tables["gibbs"]
     own = tuple(
