@@ -34,8 +34,6 @@ Flags = NDArray[np.bool_]
 LADDER = ((12.0, 80), (20.0, 150), (6.0, 150), (40.0, 150), (2.0, 150), (1.0, 150))
 #: Largest step of a logarithm at which a stage is solved; the next error is its square.
 SETTLED = 1e-5
-#: Rounding of q relative to its largest term.
-ROUNDING = 4e-16
 #: Ratio beyond which a difference is left to the law that it comes from.
 CANCELS_ACTIVITY = 1e9
 CANCELS_CONTENT = 1e8
@@ -286,10 +284,10 @@ def _step(
     flux = flux + change
     dy = q + np.einsum("ucn,cn->un", B, change) * w
     new_y = np.clip(y + np.log1p(np.maximum(dy, 0)) + np.clip(dy, -limit, 0), LOWEST, HIGHEST)
-    _own_law(block, system, point.p, flux, size, new_y)
+    _own_law(block, system, point, flux, size > CANCELS_CONTENT * np.maximum(1 + dy, 1), new_y, limit)
     new_p, noise_free = _new_p(block, system, point, flux, inverse, new_y, limit)
     bound, same = _bounds(block, system, new_y, flux, point.bound)
-    off = np.abs(new_y - y) - ROUNDING * size
+    off = np.abs(new_y - y)
     settled = same & np.isfinite(flux).all(axis=0) & (off.max(axis=0) < tolerance)
     if len(film):
         settled &= np.abs(noise_free).max(axis=0) < tolerance
@@ -323,21 +321,24 @@ def eliminate(M: Array, b: Array) -> Array:
     return b
 
 
-def _own_law(block: Block, system: Equations, p: Array, flux: Array, size: Array, y: Array) -> None:
+def _own_law(
+    block: Block, system: Equations, point: Point, flux: Array, cancels: Flags, y: Array, limit: float
+) -> None:
     """Take a content that is eaten down to rounding from the law of the row that eats it (in place)."""
-    u, n = np.nonzero(size > CANCELS_CONTENT)
+    u, n = np.nonzero(cancels)
     if not len(u):
         return
     eaten = system.B[u, :, n] * flux[:, n].T
     eaten[block.nu[:, u].T == 0] = np.inf
     row = np.argmin(eaten, axis=1)
     ln_a = system.ln_a.copy()
-    ln_a[block.film] = p
+    ln_a[block.film] = point.p
     own = block.nu[row, u]
     others = np.einsum("ku,uk->k", block.nu[row], y[:, n]) - own * y[u, n]
     law = (system.ln_k[row, n] + ln_a[row, n] - others) / own
     eats = eaten[np.arange(len(u)), row] < 0
-    y[u, n] = np.clip(np.where(eats & np.isfinite(law), law, y[u, n]), LOWEST, HIGHEST)
+    near = np.clip(law, point.y[u, n] - limit, point.y[u, n] + limit)
+    y[u, n] = np.clip(np.where(eats & np.isfinite(law), near, y[u, n]), LOWEST, HIGHEST)
 
 
 def _new_p(
