@@ -254,9 +254,12 @@ def _contents(case: Case) -> tuple[AtContent, ...]:
 
 
 def _saturations(case: Case) -> tuple[Saturation, ...]:
+    metal = {"host": case.host, "phase": case.phase}
+    measured = case.library.rows("solubility", **metal, solute=case.impurity)
+    formulas = {**dict.fromkeys((r.words["with"], "solid") for r in measured), **substances(case.library)}
     rows = []
-    for formula, state in substances(case.library):
-        counts = atoms(formula)
+    for formula, state in formulas:
+        counts = _atoms(formula)
         if state == "gas" or not {case.impurity} <= set(counts) <= {case.impurity, case.host}:
             continue
         made = ln_dissolution(case.library, case.host, case.phase, formula, state, case.T, case.draws)
@@ -266,6 +269,14 @@ def _saturations(case: Case) -> tuple[Saturation, ...]:
     for row in sorted(rows, key=lambda row: row.ppm.median):
         lowest.setdefault(row.formula, row)
     return tuple(lowest.values())
+
+
+def _atoms(phase: str) -> dict[str, float]:
+    """Count the atoms of a phase; none where its name is no formula."""
+    try:
+        return atoms(phase)
+    except ValueError:
+        return {}
 
 
 def _saturation(case: Case, formula: str, state: str, made: Energy) -> Saturation:
