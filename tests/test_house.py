@@ -15,7 +15,10 @@ KINETICS_BASE = {"kinetics.exposure", "kinetics.arrhenius", "kinetics.schedule",
 BATH = {f"kinetics.{n}" for n in ("stage", "flux_newton", "arrow", "passive")}
 DRIVING_FORCE = {
     f"driving_force.{n}"
-    for n in ("solution", "substances", "species", "equilibrium", "estimate", "sensitivity", "nonideal")
+    for n in (
+        *("solution", "pure", "substances", "species", "estimate"),
+        *("equilibrium", "sensitivity", "nonideal"),
+    )
 }
 EQUILIBRIUM = {f"driving_force.{n}" for n in ("components", "interior", "newton", "problem")}
 CONTACTS = {"contacts", "contacts.*"}
