@@ -84,7 +84,9 @@ ALLOWED: dict[str, set[str]] = {
     "driving_force.problem": NUMBERS | {"driving_force.components"},
     "driving_force.equilibrium": NUMBERS | EQUILIBRIUM,
     "driving_force.sensitivity": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
-    "driving_force.nonideal": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
+    "driving_force.nonideal": NUMBERS
+    | EQUILIBRIUM
+    | {"driving_force.equilibrium", "driving_force.sensitivity"},
     "driving_force.pure": NUMBERS | {"database", "draws"},
     "driving_force.substances": NUMBERS
     | {"database", "draws", "driving_force.solution", "driving_force.pure", "driving_force.estimate"},

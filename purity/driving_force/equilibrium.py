@@ -116,6 +116,12 @@ def _numbers(some: Problem, base: components.Basis, lam: Array, size: Array) -> 
     return {**fixed, "lam": base.members @ lam, "size": size}
 
 
+def _sizes(problem: Problem, n: Array) -> Array:
+    """Amount of each phase, mol."""
+    edges = problem.layout.edges
+    return np.array([n[i:j].sum(axis=0) for i, j in edges]).reshape(len(edges), n.shape[1])
+
+
 def _solve(problem: Problem, warm: Equilibrium | None) -> _Solved:
     """Run the chain of starts, each only on the draws that the one before left unproved."""
     base, out = problem.basis, _Solved.none(problem)
@@ -132,7 +138,8 @@ def _solve(problem: Problem, warm: Equilibrium | None) -> _Solved:
             start = interior.CHAIN[number - 1]
             guess = interior.interior(layout, some.g, total, some.weight, some.volume, start)
         lam, size, active = guess
-        answer = newton.polish(layout, base, _numbers(some, base, lam, size), active)
+        limit = newton.LIMIT if number else newton.WARM_LIMIT
+        answer = newton.polish(layout, base, _numbers(some, base, lam, size), active, limit=limit)
         out.keep(todo, answer, base)
         out.start[todo[answer.done]] = number
     _rebase(problem, out)
@@ -159,7 +166,7 @@ def _recalled(some: Problem, warm: Equilibrium) -> tuple[Array, Array, Mask]:
     lam: Array = np.nan_to_num(warm.potentials[some.elements[some.columns]], neginf=-1e3)
     active = warm.present[closed]
     n: Array = np.nan_to_num(warm.amounts[some.species])
-    size: Array = np.stack([n[i:j].sum(axis=0) for i, j in some.layout.edges])
+    size = _sizes(some, n)
     for family in some.layout.families:
         at = np.array(family)
         each = some.g[[some.layout.edges[p][0] for p in family]]
@@ -188,7 +195,7 @@ def _rebase(problem: Problem, out: _Solved) -> None:
         order = np.lexsort((-amount, ~first))
         base = components.basis(problem.rows, problem.inputs, tuple(problem.rows[i] for i in order))
         some = problem.take(draws)
-        size: Array = np.stack([out.n[i:j, draws].sum(axis=0) for i, j in problem.layout.edges])
+        size = _sizes(some, out.n[:, draws])
         active = out.active[: len(size), draws]
         data = _numbers(some, base, out.lam[:, draws], np.maximum(size, 1e-12 * some.weight))
         out.keep(draws, newton.polish(problem.layout, base, data, active), base)
@@ -327,7 +334,9 @@ def equilibrium(
         mol of each element, or of each input substance when `inputs` gives their formulas. Substances
         keep the digits that element totals lose: give them where contents are far below the wall.
     held : mapping of str to (N,) array, optional
-        Chemical potential over RT of elements that a reservoir holds. Their amounts are not balanced.
+        Chemical potential over RT of elements that a reservoir holds. Their amounts are not balanced. A
+        draw in which they alone saturate a phase (a pressure held above the total, an element held above
+        mole fraction 1 in the metal) has no answer and is refused.
     gas_volume : (N,) array or None
         P0 V / (R T) of a gas at fixed volume, mol; None: the gas is at fixed total pressure.
     inputs : (inputs, E) integer array or None
@@ -348,7 +357,8 @@ def equilibrium(
     With constant activity coefficients the Gibbs energy is convex, so that the duality gap proves the
     optimum. Interior point on the dual (G. Lidor, Stanford 1975, ADA012989), then Newton's method on the
     assemblage in component substances (W. R. Smith and R. W. Missen, Chemical Reaction Equilibrium
-    Analysis, 1982). A missing species or phase is not seen by any certificate.
+    Analysis, 1982). A missing species or phase is not seen by any certificate. A closed gas at a fixed low
+    pressure grows until it has evaporated the charge: give a vacuum vessel its volume instead.
     """
     g, amounts, levels, room = broadcast(g, amounts, held, gas_volume)
     problem, own = reduce(system, g, amounts, levels, room, inputs)

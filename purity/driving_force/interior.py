@@ -247,7 +247,7 @@ def _first(layout: Layout, g: Array, target: Array, weight: Array, volume: Array
 def _reduce(d: Draws, start: Start) -> None:
     """Shrink the barrier, or first the distance to the balances asked, where the iteration is centred."""
     e1 = np.abs(d["e1"]).max(axis=0)
-    e3 = np.abs(d["e3"]).max(axis=0)
+    e3 = np.abs(d["e3"]).max(axis=0, initial=0.0)
     near = (e1 < 1.0) & (e3 < 0.3) & (d["t"] > 0.1).all(axis=0) & (d["t"] < 3.0).all(axis=0)
     if start.homotopy:
         away = np.abs(d["off"]).max(axis=0) > 0.0
@@ -324,6 +324,6 @@ def interior(
 
 def _finished(d: Draws, start: Start) -> NDArray[np.bool_]:
     near = (d["t"] > 0.1).all(axis=0) & (d["t"] < 3.0).all(axis=0)
-    met = (np.abs(d["e1"]).max(axis=0) < 1e-2) & (np.abs(d["e3"]).max(axis=0) < 1e-6)
+    met = (np.abs(d["e1"]).max(axis=0) < 1e-2) & (np.abs(d["e3"]).max(axis=0, initial=0.0) < 1e-6)
     ready: NDArray[np.bool_] = near & met & (d["mu"] <= start.end) & ~d["off"].any(axis=0)
     return ready

@@ -21,6 +21,8 @@ Draws = dict[str, NDArray[np.float64]]
 
 #: Saturation above which an absent phase is added, in ln.
 ADMIT = 1e-9
+#: Iterations after an interior-point solve, and from a nominal answer, which is close or of no use.
+LIMIT, WARM_LIMIT = 75, 12
 #: Share of its largest possible amount below which a shrinking phase is given up.
 _GONE = 1e-18
 _EPS = float(np.finfo(float).eps)
@@ -233,9 +235,10 @@ def _measure(d: Draws, point: Draws, active: Mask) -> tuple[Mask, Mask]:
 
 def _admit(d: Draws, point: Draws, active: Mask, settled: Mask) -> Mask:
     """Draws whose assemblage is stable; where it is not, the most oversaturated phase is added in place."""
+    if not len(active):
+        return settled
     over: Array = np.where(active, -np.inf, point["f"])
-    worst = over.argmax(axis=0) if len(over) else np.zeros(len(settled), dtype=np.intp)
-    cols = np.arange(len(settled))
+    worst, cols = over.argmax(axis=0), np.arange(len(settled))
     unstable = settled & (over[worst, cols] > ADMIT)
     where = (worst[unstable], cols[unstable])
     active[where] = True
@@ -244,9 +247,7 @@ def _admit(d: Draws, point: Draws, active: Mask, settled: Mask) -> Mask:
     return good
 
 
-def polish(
-    layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: int = 75, change: bool = True
-) -> Polished:
+def polish(layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: int = LIMIT) -> Polished:
     """Solve balances and saturations of the active phases to rounding, and prove the assemblage.
 
     Parameters
@@ -260,8 +261,6 @@ def polish(
         First guess of the stable phases.
     limit : int
         Iterations.
-    change : bool
-        False: the assemblage may not change.
 
     Returns
     -------
@@ -281,8 +280,6 @@ def polish(
         before = now.copy()
         good = _admit(d, point, now, settled)
         leave = good | lost
-        if not change:
-            leave |= (now != before).any(axis=0)
         if leave.any():
             out, keep = live[leave], ~leave
             part = {key: value[..., good] for key, value in point.items()}

@@ -59,8 +59,6 @@ class Problem:
         Species and inputs in independent elements.
     formula : (S, E) array
         Species in all elements that are balanced.
-    brings : (J, E) array
-        Inputs likewise.
     species, phases, elements, columns : integer arrays
         Positions in the system; `columns` are the independent ones among `elements`.
     absent, used : integer arrays
@@ -84,7 +82,6 @@ class Problem:
     rows: components.Rows
     inputs: components.Rows
     formula: Array
-    brings: Array
     species: NDArray[np.intp]
     phases: NDArray[np.intp]
     elements: NDArray[np.intp]
@@ -109,7 +106,14 @@ def _rows(matrix: NDArray[np.int64]) -> components.Rows:
     return tuple(tuple(int(v) for v in row) for row in matrix)
 
 
-def _checked(system: System, g: Array, amounts: Array, inputs: NDArray[np.int64]) -> None:
+def _checked(
+    system: System,
+    g: Array,
+    amounts: Array,
+    inputs: NDArray[np.int64],
+    held: Mapping[str, Array],
+    gas_volume: Array | None,
+) -> None:
     names = system.elements if len(inputs) == len(system.elements) else None
     if g.shape[0] != len(system.species) or amounts.shape[0] != len(inputs):
         raise ValueError(
@@ -123,6 +127,10 @@ def _checked(system: System, g: Array, amounts: Array, inputs: NDArray[np.int64]
     if wrong.any():
         j = int(np.flatnonzero(wrong)[0])
         raise IllPosedError(f"the amount of {names[j] if names else f'input {j + 1}'} is not 0 or more")
+    if unknown := sorted(set(held) - set(system.elements)):
+        raise IllPosedError(f"{unknown[0]} is held but is in no species of this contact")
+    if gas_volume is not None and GAS not in system.phases:
+        raise IllPosedError(f"a gas volume is given but no phase is named {GAS!r}")
 
 
 def reduce(
@@ -151,67 +159,68 @@ def reduce(
     """
     formula = np.asarray(system.formula, dtype=np.int64)
     given = np.eye(len(system.elements), dtype=np.int64) if inputs is None else np.asarray(inputs)
-    _checked(system, g, amounts, given)
-    if unknown := sorted(set(held) - set(system.elements)):
-        raise IllPosedError(f"{unknown[0]} is held but is in no species of this contact")
+    _checked(system, g, amounts, given, held, gas_volume)
     is_held = np.array([e in held for e in system.elements])
     some: Array = given.T.astype(float) @ amounts
-    present = (some.max(axis=1) > 0.0) & ~is_held
-    absent = ~present & ~is_held
-    keep = ~(formula[:, absent] > 0).any(axis=1)
-    volatile = system.phases.index(GAS) if gas_volume is not None and GAS in system.phases else -1
-    if gas_volume is not None and volatile < 0:
-        raise IllPosedError(f"a gas volume is given but no phase is named {GAS!r}")
-    bare: Mask = formula[:, present].sum(axis=1) == 0
+    present: Mask = (some.max(axis=1) > 0.0) & ~is_held
+    elements, absent = np.flatnonzero(present), np.flatnonzero(~present & ~is_held)
+    used = np.flatnonzero(given[:, elements].any(axis=1) & (amounts.max(axis=1) > 0.0))
+    if not len(used):
+        raise IllPosedError("nothing is put in: every amount is zero")
+    volatile = system.phases.index(GAS) if gas_volume is not None else -1
+    species = _members(system, elements, absent, volatile)
+    sub, brings = _rows(formula[np.ix_(species, elements)]), _rows(given[np.ix_(used, elements)])
+    solid: Array = np.asarray(sub, dtype=float)
+    matrix: Array = np.asarray(brings, dtype=float)
+    fed = _floored(matrix, amounts[used])
+    named = [system.elements[e] for e in elements], [system.species[i] for i in species]
+    _posed(sub, brings, fed, *named, inputs is None)
+    phases, numbers = _renumber(system.phase[species])
+    layout, columns, rows = components.layout(sub, numbers, volatile in phases)
+    into = tuple(tuple(row[c] for c in columns) for row in brings)
+    largest = np.argsort(-np.median(fed, axis=1), kind="stable")
+    own = g.copy()
+    for e, value in held.items():
+        own -= formula[:, [system.elements.index(e)]] * value
+    total: Array = matrix.T @ fed
+    problem = Problem(
+        layout=layout,
+        rows=rows,
+        inputs=into,
+        formula=solid,
+        species=species,
+        phases=phases,
+        elements=elements,
+        columns=np.array(columns, dtype=np.intp),
+        absent=absent,
+        used=used,
+        basis=components.basis(rows, into, tuple(into[j] for j in largest)),
+        missing=matrix.T @ amounts[used] <= 0.0,
+        g=_lifted(layout, own[species]),
+        fed=fed,
+        total=total,
+        weight=_largest(layout, solid, total),
+        volume=np.zeros(g.shape[1]) if gas_volume is None else gas_volume,
+    )
+    return problem, own
+
+
+def _members(
+    system: System, elements: NDArray[np.intp], absent: NDArray[np.intp], volatile: int
+) -> NDArray[np.intp]:
+    """Species that count, sorted by phase, a gas at fixed volume last.
+
+    A phase made of held elements alone has no amount: its saturation is all there is to know.
+    """
+    keep: Mask = system.formula[:, absent].sum(axis=1) == 0
+    bare: Mask = system.formula[:, elements].sum(axis=1) == 0
     for p in range(len(system.phases)):
         members = keep & (system.phase == p)
         if p != volatile and bare[members].all():
             keep &= ~members
     species = np.flatnonzero(keep)
     order = np.lexsort((species, system.phase[species], system.phase[species] == volatile))
-    species = species[order]
-    elements = np.flatnonzero(present)
-    used = np.flatnonzero(given[:, elements].any(axis=1) & (amounts.max(axis=1) > 0.0))
-    if not len(used):
-        raise IllPosedError("nothing is put in: every amount is zero")
-    sub = _rows(formula[np.ix_(species, elements)])
-    brings = _rows(given[np.ix_(used, elements)])
-    fed: Array = _floored(np.asarray(brings, dtype=float), amounts[used])
-    names = [system.elements[e] for e in elements]
-    _posed(sub, brings, fed, names, [system.species[i] for i in species], inputs is None)
-    phases, numbers = _renumber(system.phase[species])
-    layout, columns, rows = components.layout(sub, numbers, volatile >= 0)
-    into = tuple(tuple(row[c] for c in columns) for row in brings)
-    largest = np.argsort(-np.median(fed, axis=1), kind="stable")
-    base = components.basis(rows, into, tuple(into[j] for j in largest))
-    own = g.copy()
-    for e, value in held.items():
-        own -= formula[:, [system.elements.index(e)]] * value
-    solid: Array = np.asarray(sub, dtype=float)
-    matrix: Array = np.asarray(brings, dtype=float)
-    total: Array = matrix.T @ fed
-    volume: Array = np.zeros(g.shape[1]) if gas_volume is None else gas_volume
-    problem = Problem(
-        layout,
-        rows,
-        into,
-        solid,
-        matrix,
-        species,
-        phases,
-        elements,
-        np.array(columns, dtype=np.intp),
-        np.flatnonzero(absent),
-        used,
-        base,
-        matrix.T @ amounts[used] <= 0.0,
-        _lifted(layout, own[species]),
-        fed,
-        total,
-        _largest(layout, solid, total),
-        volume,
-    )
-    return problem, own
+    return species[order]
 
 
 def _renumber(phase: NDArray[np.int64]) -> tuple[NDArray[np.intp], tuple[int, ...]]:

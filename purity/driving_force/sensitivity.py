@@ -77,7 +77,8 @@ def _point(some: Problem, solved: Equilibrium, draws: NDArray[np.intp]) -> tuple
     lam = base.members @ np.nan_to_num(solved.potentials[some.elements[some.columns]][:, draws], neginf=-1e3)
     n: Array = solved.amounts[some.species][:, draws]
     active = solved.present[some.phases[: len(layout.edges)]][:, draws]
-    size: Array = np.stack([n[i:j].sum(axis=0) for i, j in layout.edges])
+    total = [n[i:j].sum(axis=0) for i, j in layout.edges]
+    size: Array = np.array(total).reshape(len(total), n.shape[1])
     data = newton.balances(some.g, some.volume, some.fed, some.weight, base)
     point = newton.evaluate(layout, base, {**data, "lam": lam, "size": size}, active)
     return {**point, "b": data["b"], "fed": some.fed}, active

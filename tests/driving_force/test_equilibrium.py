@@ -430,6 +430,31 @@ def test_a_gas_of_fixed_volume_obeys_the_gas_law(ln_v: float) -> None:
     assert np.abs(COPPER.formula.T @ r.amounts[:, 0] / (COPPER_IN.T @ COPPER_N) - 1).max() < 1e-9
 
 
+def test_a_vessel_may_hold_gas_alone() -> None:
+    """H2 + 1/2 O2 = H2O: with ln K = 15 nearly all hydrogen burns, and the pressure falls with the moles."""
+    system = made("Cu H O", 0, ("metal", {"Cu": "Cu"}), ("gas", {"H2": "H2", "O2": "O2", "H2O": "H2 O"}))
+    g = np.array([[-6.6], [-20.0], [-28.0], [-49.0]])
+    n = np.array([[0.0], [2.0], [1.2]])
+    r = equilibrium(system, g, n, gas_volume=np.array([3.0]))
+    p = np.exp(r.ln_activity[1:, 0])
+    assert p[2] / (p[0] * np.sqrt(p[1])) == pytest.approx(np.exp(15.0), rel=1e-12)
+    assert 3.0 * (p[0] + p[2]) == pytest.approx(1.0, rel=1e-12)
+    assert 3.0 * (2 * p[1] + p[2]) == pytest.approx(1.2, rel=1e-12)
+    assert r.state[0] == Outcome.HOST_CONSUMED
+
+
+def test_a_gas_that_has_nothing_in_it_leaves_the_volume_unused() -> None:
+    dry = np.array([[1.0], [0.3], [0.0], [0.0]])
+    no_gas = replace(
+        COPPER, species=(*COPPER.species[:5], "Ar"), formula=COPPER.formula[:6], phase=COPPER.phase[:6]
+    )
+    open_room = equilibrium(no_gas, COPPER_G[:6, None], dry, inputs=COPPER_IN, gas_volume=np.array([1.0]))
+    alone = equilibrium(no_gas, COPPER_G[:6, None], dry, inputs=COPPER_IN)
+    assert open_room.state[0] == Outcome.SOLVED
+    assert open_room.amounts == pytest.approx(alone.amounts, rel=1e-12)
+    assert not open_room.present[3, 0]
+
+
 def test_a_fixed_volume_equals_the_fixed_pressure_it_reaches() -> None:
     """The same contact at the total pressure found in the vessel must give the same answer."""
     vessel = equilibrium(
