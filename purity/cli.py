@@ -77,9 +77,9 @@ def main() -> None:
 
 
 def _status(error: PurityError) -> int:
-    from purity.errors import DataError, ScenarioError, UnitError
+    from purity.errors import IllPosedError
 
-    return BAD_INPUT if isinstance(error, DataError | ScenarioError | UnitError) else FAILED
+    return FAILED if isinstance(error, IllPosedError) else BAD_INPUT
 
 
 def _end(status: int, text: str) -> NoReturn:
@@ -266,6 +266,38 @@ def _near(said: str, names: Iterable[str]) -> str:
 
     known = list(names)
     return f"nearest: {', '.join(get_close_matches(said, known, 3, 0.4) or sorted(known))}"
+
+
+@app.command(
+    epilog='Examples: purity affinity Cu Fe -T "1180 degC";  '
+    'purity affinity Cu O -T "1180 degC" --against magnesia --atmosphere "argon N5.0"'
+)
+def affinity(
+    host: Annotated[str, typer.Argument(metavar="HOST")],
+    impurity: Annotated[str, typer.Argument(metavar="IMPURITY")],
+    temperature: Annotated[str, typer.Option("--temperature", "-T", help='With its unit: "1180 degC".')],
+    phase: Annotated[str | None, typer.Option(help="Phase of the host; the stable one if not given.")] = None,
+    against: Annotated[
+        list[str] | None, typer.Option(help="A wall; may be repeated. All that hold IMPURITY if not given.")
+    ] = None,
+    atmosphere: Annotated[str | None, typer.Option(help="Gas that sets oxygen, nitrogen, hydrogen.")] = None,
+    as_json: AsJson = False,
+    data: Folder = None,
+) -> None:
+    """Say how far IMPURITY would go into HOST: activity, driving force, ceilings; no rates."""
+    from dataclasses import asdict
+
+    from purity.affinity import affinity as answer
+    from purity.database import load
+    from purity.quantities import number
+    from purity.report.affinity import render
+    from purity.report.export import plain_json
+
+    library = load(data)
+    _known(library, host)
+    found = answer(library, host, impurity, number(temperature, "temperature"), phase, against, atmosphere)
+    facts = asdict(found)
+    _say(plain_json(facts) if as_json else render(facts, width=_width()))
 
 
 @app.command(epilog="Example: purity new lot.toml, then edit it, then purity rank lot.toml")

@@ -15,7 +15,7 @@ from types import ModuleType, SimpleNamespace
 import pytest
 
 from purity import cli
-from purity.errors import DataError, Fault, OutOfRangeError, ScenarioError
+from purity.errors import DataError, Fault, IllPosedError, OutOfRangeError, ScenarioError
 from purity.result import Result
 
 Run = Callable[..., tuple[int, str, str]]
@@ -105,10 +105,10 @@ def test_a_csv_is_written_whole_and_kept(run: Run, tmp_path: Path) -> None:
 
 def test_a_failed_run_leaves_no_file(run: Run, tmp_path: Path) -> None:
     def fail(*_: object, **__: object) -> Result:
-        raise OutOfRangeError("the metal boils at 3000 degC")
+        raise IllPosedError("the wall holds no host")
 
     status, out, err = run("rank", "x", "--csv", str(tmp_path / "lot.csv"), assess=fail)
-    assert (status, out, err) == (1, "", "the metal boils at 3000 degC\n")
+    assert (status, out, err) == (1, "", "the wall holds no host\n")
     assert not list(tmp_path.iterdir())
 
 
@@ -127,7 +127,8 @@ def test_a_half_written_file_is_taken_away(tmp_path: Path, monkeypatch: pytest.M
     [
         (ScenarioError("lot.toml", [Fault(3, "lot.mass", "25 kgs: a mass is wanted")]), 2),
         (DataError("own", [Fault(3, "a", "b")]), 2),
-        (OutOfRangeError("too hot"), 1),
+        (OutOfRangeError("too hot"), 2),
+        (IllPosedError("no answer"), 1),
         (FileNotFoundError(2, "No such file or directory", "lot.toml"), 2),
         (ZeroDivisionError("float division by zero"), 1),
     ],
@@ -314,3 +315,32 @@ def test_own_tables_are_checked_before_they_are_used(tmp_path: Path) -> None:
     used = purity("data", "sources", "--data", str(tmp_path))
     assert used.returncode == 2
     assert "Traceback" not in used.stderr
+
+
+def test_affinity_is_told_as_table_and_as_json() -> None:
+    words = ("affinity", "Cu", "O", "-T", "1180 degC", "--against", "magnesia", "--atmosphere", "argon N5.0")
+    done = purity(*words)
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.startswith("O in liquid Cu at 1180 degC (1453 K)\n")
+    assert "magnesia crucible" in done.stdout
+    assert max(map(len, done.stdout.splitlines()[4:])) <= 80
+    facts = json.loads(purity(*words, "--json").stdout)
+    assert (facts["host"], facts["impurity"], facts["phase"]) == ("Cu", "O", "liquid")
+    assert facts["ln_gamma"]["low"] < facts["ln_gamma"]["median"] < facts["ln_gamma"]["high"]
+
+
+@pytest.mark.parametrize(
+    "words, said",
+    [
+        (("Cu", "Xx", "-T", "1180 degC"), "Xx"),
+        (("Cuu", "Fe", "-T", "1180 degC"), "nearest: Cu"),
+        (("Cu", "Fe", "-T", "1180 degF"), "degC"),
+        (("Cu", "Fe", "-T", "9000 degC"), "no phase of Cu"),
+        (("Cu", "Fe", "-T", "1180 degC", "--atmosphere", "argn"), "argn"),
+    ],
+)
+def test_a_wrong_question_of_affinity_is_bad_input(words: tuple[str, ...], said: str) -> None:
+    done = purity("affinity", *words)
+    assert (done.returncode, done.stdout) == (2, "")
+    assert said in done.stderr
+    assert "Traceback" not in done.stderr

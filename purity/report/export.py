@@ -8,7 +8,7 @@ from collections.abc import Mapping, Sequence
 from io import StringIO
 from typing import Any
 
-from purity.result import Result, to_dict, to_rows
+from purity.result import DIGITS, Result, to_dict, to_rows
 
 #: A cell that starts with one of these may be run as a formula by a spreadsheet.
 FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
@@ -16,7 +16,20 @@ FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
 
 def as_json(result: Result) -> str:
     """Return a run in the promised JSON shape, indented, ended by a line feed."""
-    return json.dumps(to_dict(result), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+    return plain_json(to_dict(result))
+
+
+def plain_json(value: object) -> str:
+    """Return mappings, sequences, numbers and words as JSON text; numbers have 9 significant digits."""
+    return json.dumps(_rounded(value), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def _rounded(value: object) -> object:
+    if isinstance(value, float):
+        return float(f"{value:.{DIGITS}g}")
+    if isinstance(value, Mapping):
+        return {name: _rounded(inner) for name, inner in value.items()}
+    return [_rounded(inner) for inner in value] if isinstance(value, list | tuple) else value
 
 
 def as_csv(result: Result) -> str:
