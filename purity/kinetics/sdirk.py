@@ -138,7 +138,7 @@ def step(task: Task) -> Change:
     done = done & answer.ok & (answer.x[0] >= -NIL).all(axis=0)
     if not done.all():
         some = np.flatnonzero(~done)
-        answer.put(some, _euler(replace(task, points=one.points).take(some)))
+        answer.put(some, euler(replace(task, points=one.points).take(some)))
     return answer
 
 
@@ -153,7 +153,8 @@ def _second(task: Task, one: Change, right: Array) -> Change:
     )
 
 
-def _euler(task: Task) -> Change:
+def euler(task: Task) -> Change:
+    """Take one step of backward Euler, cut into pieces in draws where it is not solved whole."""
     whole = _solve(task, task.last, task.total, task.dt, _per_time(task.left, task.dt))
     whole = replace(whole, gained=task.dt * whole.gained, given=task.dt * whole.given)
     if not whole.ok.all():
