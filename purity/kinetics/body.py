@@ -24,6 +24,7 @@ from purity.kinetics import control
 from purity.kinetics.exposure import Array, Curve, Exposure
 from purity.kinetics.passage import is_hold, whole
 from purity.kinetics.pieces import (
+    LEAST_LN_D,
     STEPS,
     STEPS_HISTORY,
     Flags,
@@ -142,6 +143,7 @@ def body(
     counts = counts if nodes is None else (nodes, nodes + nodes // 2, counts[2])
     course, exact, error, modes = _resolve(piece, schedule, counts, history)
     run = whole(piece, course, exact, history, modes)
+    modes = run.profile.shape[1]
     limits, shares = control.shares(piece, course, exact, control.sample(len(run.flags)), modes)
     return BodyRun(
         run.mean,
@@ -189,6 +191,8 @@ def _piece(
     if not R > 0:
         raise OutOfRangeError("the half thickness (or radius) of the pieces must be positive")
     draws = (x0.shape[-1],)
+    ln = np.where(np.isfinite(diffusivity.ln), diffusivity.ln, LEAST_LN_D)
+    diffusivity = Curve(diffusivity.T, np.maximum(ln, LEAST_LN_D))
     density, amount = (np.broadcast_to(np.asarray(v, dtype=float), draws) for v in (molar_density, amount))
     return Piece(
         SHAPES[form.shape],

@@ -98,22 +98,26 @@ def _each_chunk(
     Bi: Number,
     alpha: Number | None,
     nodes: int,
+    power: int = 0,
 ) -> Array:
+    """Invert over all draws. Beyond FO_MAX only Bi Fo counts (the piece is even), and a result in units
+    of Fo^power follows; below BI_MIN it is in proportion to Bi.
+    """
     parts: list[Number] = [Fo, Bi] if alpha is None else [Fo, Bi, alpha]
     arrays = np.broadcast_arrays(*(np.atleast_1d(np.asarray(v, dtype=float)) for v in parts))
     flat = [a.ravel() for a in arrays]
     result: Array = np.zeros(flat[0].shape)
     for start in range(0, result.size, CHUNK):
         piece = [a[start : start + CHUNK] for a in flat]
-        # Beyond FO_MAX only Bi Fo counts, below BI_MIN the uptake is in proportion to Bi.
-        wanted = np.minimum(piece[1], BI_MAX) * np.maximum(piece[0] / FO_MAX, 1.0)
+        longer = np.maximum(piece[0] / FO_MAX, 1.0)
+        wanted = np.minimum(piece[1], BI_MAX) * longer
         fo, bi = np.clip(piece[0], FO_MIN, FO_MAX), np.clip(wanted, BI_MIN, BI_MAX)
         rest = piece[2] if alpha is not None else None
 
         def transform(s: Complex, bi: Array = bi, rest: Array | None = rest) -> Complex:
             return law(s, bi, _denominator(shape, s, bi, rest))
 
-        value = invert(transform, fo, nodes)
+        value = invert(transform, fo, nodes) * np.minimum(wanted / BI_MIN, 1.0) * longer**power
         result[start : start + CHUNK] = np.where(piece[0] < FO_MIN, 0.0, value)
     return result.reshape(arrays[0].shape)
 
@@ -154,12 +158,14 @@ def surface_content(
 def flux(shape: str, Fo: Number, Bi: Number, *, alpha: Number | None = None, nodes: int = 16) -> Array:
     """Rate of the mean content, d uptake / d Fo; arguments of :func:`uptake`."""
     g = GEOMETRY[shape]
-    return _each_chunk(lambda s, bi, below: g / (s * below), shape, Fo, Bi, alpha, nodes)
+    return _each_chunk(lambda s, bi, below: g / (s * below), shape, Fo, Bi, alpha, nodes, -1)
 
 
 def surface_integral(shape: str, Fo: Number, Bi: Number, *, nodes: int = 16) -> Array:
     """Integral of :func:`surface_content` over Fo; arguments of :func:`uptake`."""
-    return _each_chunk(lambda s, bi, below: impedance(shape, s) / (s * s * below), shape, Fo, Bi, None, nodes)
+    return _each_chunk(
+        lambda s, bi, below: impedance(shape, s) / (s * s * below), shape, Fo, Bi, None, nodes, 1
+    )
 
 
 def amplitudes(shape: str, Fo: Number, Bi: Number, rate: Array, surface: Array, *, nodes: int = 16) -> Array:
@@ -200,7 +206,7 @@ def elasticities(shape: str, Fo: Number, Bi: Number, *, nodes: int = 16) -> tupl
         lambda s, bi, below: g / (s * s) / bi / (below * below), shape, Fo, Bi, None, nodes
     )
     E_h = to_surface / content
-    E_t = np.clip(Fo, FO_MIN, FO_MAX) * flux(shape, Fo, Bi, nodes=nodes) / content
+    E_t = np.clip(Fo, FO_MIN, None) * flux(shape, Fo, Bi, nodes=nodes) / content
     return E_h, E_t - E_h, E_t
 
 

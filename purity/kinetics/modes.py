@@ -190,7 +190,7 @@ class Response:
     Parameters
     ----------
     damping : (M, N) array
-        1 / (1 + gamma d lambda).
+        1 / (1 + weight d lambda).
     reach : (N,) array
         sum of phi^2 damping.
     """
@@ -199,9 +199,9 @@ class Response:
     reach: Array
 
 
-def respond(modes: Basis, d: Array) -> Response:
-    """Response of a step of size d in Fo."""
-    damping = np.asarray(_column(GAMMA * modes.rate) * d)
+def respond(modes: Basis, d: Array, weight: float = GAMMA) -> Response:
+    """Response of a stage of weight times d in Fo."""
+    damping = np.asarray(_column(weight * modes.rate) * d)
     damping += 1.0
     np.reciprocal(damping, out=damping)
     return Response(damping, _sum(modes.surface**2, damping))

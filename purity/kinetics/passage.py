@@ -7,19 +7,21 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from purity.constants import DILUTE
+from purity.constants import DILUTE, R
 from purity.kinetics import laplace, modes
-from purity.kinetics.exposure import Array, ln_at
+from purity.kinetics.exposure import Array
 from purity.kinetics.modes import CARRY, GAMMA
 from purity.kinetics.pieces import (
     MOST_BI,
     SKIN,
+    Action,
     Flags,
     Interior,
     Piece,
     Rates,
     Step,
     Surface,
+    act,
     coefficients,
     interior,
     layer_share,
@@ -33,8 +35,13 @@ from purity.kinetics.stage import Coefficients
 
 #: A part of a schedule that gives more than this share of the uptake must be resolved by the basis.
 MATTERS = 0.01
+#: Smallest Bi: below it nothing passes.
+LEAST_BI = 1e-250
 #: Rows (impurities x draws) that pass together, so that work arrays stay in the cache.
 ROWS = 4096
+#: Activation energy (J/mol) by which the first stage of a ramp is placed. The order of the method does not
+#: depend on it, and one value for all keeps every draw apart from its neighbours.
+TYPICAL = 100e3
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,17 +159,17 @@ def _laws(
     if step.hold:
         return mean, (second, second)
     return mean, (
-        coefficients(contact.laws, mean, step.T1 + _place(piece, step) * (step.T2 - step.T1)),
+        coefficients(contact.laws, mean, step.T1 + _place(step) * (step.T2 - step.T1)),
         second,
     )
 
 
-def _place(piece: Piece, step: Step) -> float:
-    """Fraction of the time of a step at which the first stage lies, gamma of the Fo of the mean impurity."""
-    rise = ln_at(piece.diffusivity, step.T2) - ln_at(piece.diffusivity, step.T1)
-    rise = rise[np.isfinite(rise)]
-    b = float(np.clip(rise.mean(), -30.0, 30.0)) if rise.size else 0.0
-    return float(GAMMA) if abs(b) < 1e-6 else float(np.log1p(GAMMA * np.expm1(b)) / b)
+def _place(step: Step) -> Array:
+    """Fraction of the time of a step at which the first stage lies: gamma of a typical Fo."""
+    b = TYPICAL / R * (1.0 / step.T1 - 1.0 / step.T2)
+    flat = np.abs(b) < 1e-6
+    b = np.where(flat, 1.0, b)
+    return np.asarray(np.where(flat, GAMMA, np.log1p(GAMMA * np.expm1(b)) / b))
 
 
 def _advance(
@@ -176,28 +183,47 @@ def _advance(
 ) -> None:
     shape = piece.x0.shape
     length = np.broadcast_to(step.length, shape[1:])
-    span = GAMMA * length
-    response = modes.respond(inside.modes, d.reshape(-1))
-    stretch = response.reach.reshape(shape) * inside.factor
-    to_flux = (span * inside.factor).reshape(-1)
+    start, before = state.y, contact.points
     most = contact.most(length)
-
-    rest, H = modes.still(inside.modes, response, state.y)
-    gain1, x1 = contact.act(laws[0], H.reshape(shape), stretch, span, most)
-    flux1 = contact.flux.copy()
-    y = modes.push(inside.modes, response, rest, to_flux * gain1.sum(axis=0).reshape(-1))
-
-    right = (1.0 - CARRY) * state.y + CARRY * y
-    rest, H = modes.still(inside.modes, response, right)
-    most = (most - (1.0 - GAMMA) * flux1) / GAMMA
-    gain2, x2 = contact.act(laws[1], H.reshape(shape), stretch, span, most)
-    state.y = modes.push(inside.modes, response, rest, to_flux * gain2.sum(axis=0).reshape(-1))
-
-    gain = length * ((1.0 - GAMMA) * gain1 + GAMMA * gain2)
+    y, _, first = _stage(inside, contact, laws[0], start, d, GAMMA, length, most)
+    contact.points = first.points
+    right = (1.0 - CARRY) * start + CARRY * y
+    later = (most - (1.0 - GAMMA) * first.flux) / GAMMA
+    state.y, H, second = _stage(inside, contact, laws[1], right, d, GAMMA, length, later)
+    # A law of logarithms has no answer below nothing: there, one backward Euler step.
+    steep = np.any(H[contact.tied] <= 0.0, axis=0) | ~second.solved
+    if steep.any() and len(contact.tied):
+        contact.points = before
+        whole_step, _, only = _stage(inside, contact, laws[1], start, d, 1.0, length, most)
+        state.y = np.where(np.tile(steep, shape[0]), whole_step, state.y)
+        first, second = first.where(steep, only), second.where(steep, only)
+    contact.points = second.points
+    contact.solved &= second.solved
+    gain = length * ((1.0 - GAMMA) * first.gain + GAMMA * second.gain)
     state.mean = state.mean + gain.sum(axis=0)
     state.ledger = state.ledger + gain
-    state.peak = np.maximum(state.peak, np.maximum(x1[0], x2[0]).max(axis=0))
-    _settle(piece, contact, state, length * ((1.0 - GAMMA) * flux1 + GAMMA * contact.flux))
+    state.peak = np.maximum(state.peak, second.x[0].max(axis=0))
+    _settle(piece, contact, state, length * ((1.0 - GAMMA) * first.flux + GAMMA * second.flux))
+
+
+def _stage(
+    inside: Interior,
+    contact: Surface,
+    law: Coefficients,
+    right: Array,
+    d: Array,
+    weight: float,
+    length: Array,
+    most: Array,
+) -> tuple[Array, Array, Action]:
+    """One implicit stage: amplitudes, surface contents without flux, and what the contacts do."""
+    span, shape = weight * length, d.shape
+    response = modes.respond(inside.modes, d.reshape(-1), weight)
+    rest, H = modes.still(inside.modes, response, right)
+    H = H.reshape(shape)
+    action = act(contact, law, H, response.reach.reshape(shape) * inside.factor, span, most)
+    flux_step = span * inside.factor * action.gain.sum(axis=0)
+    return modes.push(inside.modes, response, rest, flux_step.reshape(-1)), H, action
 
 
 def _settle(piece: Piece, contact: Surface, state: _State, passed: Array) -> None:
@@ -267,7 +293,7 @@ def is_hold(piece: Piece, course: Sequence[Step]) -> bool:
 def whole(
     piece: Piece, course: Sequence[Step], exact: bool, history: bool = False, least: int = 25
 ) -> Passage:
-    """All draws, in chunks."""
+    """All draws, in chunks, with the modes that the most demanding of them needs."""
     count, draws = piece.x0.shape
     size = max(64, ROWS // max(count, 1))
     parts = []
@@ -275,14 +301,15 @@ def whole(
         chosen = np.arange(start, min(start + size, draws))
         part, path = (piece, course) if draws <= size else (take(piece, chosen), take_steps(course, chosen))
         parts.append(hold(part, path) if exact else finest(part, path, history=history, least=least))
+    deepest = max(part.profile.shape[1] for part in parts)
+    if any(part.profile.shape[1] < deepest for part in parts):
+        return whole(piece, course, exact, history, deepest)
     if len(parts) == 1:
         return parts[0]
-    deepest = max(part.profile.shape[1] for part in parts)
-    profiles = [_deepen(piece.shape, part.profile, deepest) for part in parts]
     return Passage(
         np.concatenate([p.mean for p in parts], axis=-1),
         np.concatenate([p.film for p in parts], axis=-1),
-        np.concatenate(profiles, axis=-1),
+        np.concatenate([p.profile for p in parts], axis=-1),
         np.concatenate([p.ledger for p in parts], axis=-1),
         np.concatenate([p.flags for p in parts]),
         np.concatenate([p.attacked for p in parts]),
@@ -291,27 +318,18 @@ def whole(
     )
 
 
-def _deepen(shape: str, profile: Array, count: int) -> Array:
-    if profile.shape[1] == count:
-        return profile
-    return np.asarray(
-        np.einsum("ab,ibn->ian", modes.carry_over(shape, count, shape, profile.shape[1]), profile)
-    )
-
-
 def hold(piece: Piece, course: Sequence[Step]) -> Passage:
     """The exact hold."""
     length = np.broadcast_to(np.asarray(sum(step.length for step in course)), piece.x0.shape[1:])
-    step = Step(length, course[0].T1, course[0].T1, 0)
-    path, contact = spread(piece, step), surface(piece)
-    D = path / np.maximum(length, 1e-300)
+    step, contact = Step(np.ones(1), course[0].T1, course[0].T1, 0), surface(piece)
+    D = spread(piece, step)
     of = coefficients(contact.laws, rates(contact.laws, step, MOST_BI * piece.density * D / piece.R), step.T1)
     modes_of, g = modes.basis(piece.shape), laplace.GEOMETRY[piece.shape]
     supply, loss = of.supply.sum(axis=0), of.loss.sum(axis=0)
-    Fo, whole = path / piece.R**2, piece.R**2 / (g * D)
-    Bi = np.clip(loss * whole, laplace.BI_MIN, laplace.BI_MAX)
+    Fo, scale = D * length / piece.R**2, piece.R**2 / (g * D)
+    Bi = np.clip(loss * scale, LEAST_BI, laplace.BI_MAX)
     # Written with the flux at the start, so that a ceiling without end needs no number.
-    drive = (supply - loss * piece.x0) * whole / Bi
+    drive = (supply - loss * piece.x0) * scale / Bi
     gained = drive * laplace.uptake(piece.shape, Fo, Bi)
     y = modes.uniform(modes_of, piece.x0) + drive * laplace.amplitudes(
         piece.shape, Fo, Bi, modes_of.rate, modes_of.surface

@@ -16,9 +16,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.kinetics import flux_newton, modes
-from purity.kinetics.exposure import Array, Carrier, Curve, Exposure, activity_at, ln_at, select
+from purity.kinetics.exposure import FLOOR, Array, Carrier, Curve, Exposure, activity_at, ln_at, select
 from purity.kinetics.schedule import Schedule, fractions, segments
-from purity.kinetics.stage import HELD, Bath, Coefficients, contents, lay_out, stage
+from purity.kinetics.stage import HELD, Bath, Coefficients, Stage, contents, lay_out
 
 Flags = NDArray[np.bool_]
 Index = NDArray[np.int64]
@@ -144,8 +144,8 @@ def spread(piece: Piece, step: Step) -> Array:
     """Integral of D dt over a step, m2, (I, N)."""
     total: Array = np.zeros(1)
     for place, weight in ((0.5, 1.0),) if step.hold else GAUSS:
-        ln = ln_at(piece.diffusivity, step.T1 + place * (step.T2 - step.T1))
-        total = total + weight * np.exp(np.maximum(np.where(np.isfinite(ln), ln, LEAST_LN_D), LEAST_LN_D))
+        T = step.T1 + place * (step.T2 - step.T1)
+        total = total + weight * np.exp(np.maximum(ln_at(piece.diffusivity, T), LEAST_LN_D))
     return np.asarray(np.broadcast_to(total * step.length, piece.x0.shape))
 
 
@@ -289,35 +289,93 @@ def stretched(of: Coefficients, stretch: Array) -> Coefficients:
 
 @dataclass(slots=True)
 class Surface:
-    """The non-linear rows at the surface, and where their solver stands."""
+    """The non-linear rows at the surface, where their solver stands, and what is left of inventories."""
 
     bath: Bath
     laws: Laws
     blocks: tuple[flux_newton.Block, ...]
-    points: list[flux_newton.Point]
-    flux: Array
+    points: tuple[flux_newton.Point, ...]
     left: Array
     solved: Flags
+    tied: Index
 
     def most(self, length: Array) -> Array:
         """Largest flux that empties each inventory within a step, mol m-2 s-1."""
         area = self.bath.area[self.bath.place - 1]
         return np.asarray(self.left / np.maximum(area * length, 1e-300))
 
-    def act(
-        self, of: Coefficients, H: Array, stretch: Array, span: Array, most: Array
-    ) -> tuple[Array, Array]:
-        """Rates of gain by contact (S, I, N), 1/s, and surface contents (L, I, N), in one stage."""
-        at_stage = stage(stretched(of, stretch), H, span)
-        if not self.points:
-            self.points = [flux_newton.start(block, of, H) for block in self.blocks]
-        for b, block in enumerate(self.blocks):
-            system = flux_newton.equations(self.bath, block, at_stage, most)
-            self.points[b], solved = flux_newton.solve(block, system, self.points[b])
-            self.flux[block.rows] = self.points[b].flux
-            self.solved &= solved
-        x, gain, _ = contents(self.bath, at_stage, self.flux)
-        return gain / stretch, x
+
+@dataclass(frozen=True, slots=True)
+class Action:
+    """What the contacts do in a stage.
+
+    Parameters
+    ----------
+    gain : (S, I, N) array
+        Rate by contact, 1/s.
+    x : (L, I, N) array
+        Content below the surface, then at each contact.
+    flux : (C, N) array
+        Of the non-linear rows, mol m-2 s-1.
+    points : tuple of Point
+    solved : (N,) bool array
+    """
+
+    gain: Array
+    x: Array
+    flux: Array
+    points: tuple[flux_newton.Point, ...]
+    solved: Flags
+
+    def where(self, draws: Flags, other: Action) -> Action:
+        """Take the other where `draws`."""
+        if not draws.any():
+            return self
+        points = tuple(point.copy() for point in self.points)
+        for point, better in zip(points, other.points, strict=True):
+            point.put(draws, better.take(draws))
+        return Action(
+            np.where(draws, other.gain, self.gain),
+            np.where(draws, other.x, self.x),
+            np.where(draws, other.flux, self.flux),
+            points,
+            np.where(draws, other.solved, self.solved),
+        )
+
+
+def act(contact: Surface, of: Coefficients, H: Array, stretch: Array, span: Array, most: Array) -> Action:
+    """Solve one stage at the surface.
+
+    Parameters
+    ----------
+    contact : Surface
+    of : Coefficients
+    H : (I, N) array
+        Surface content without flux.
+    stretch : (I, N) array
+        Reach of the interior.
+    span : (N,) array
+        s.
+    most : (C, N) array
+        Largest flux of each row.
+    """
+    law = stretched(of, stretch)
+    beta = 1.0 / (1.0 + span * law.loss.sum(axis=0))
+    rest = H.copy()
+    rest[contact.tied] = np.maximum(rest[contact.tied], FLOOR)
+    below = beta * (rest + span * law.supply.sum(axis=0))
+    at_stage = Stage(law, span, beta, law.phi * below + law.rest)
+    flux: Array = np.zeros(most.shape)
+    solved, points = np.ones(H.shape[1], dtype=bool), []
+    before = contact.points or tuple(flux_newton.start(block, of, rest) for block in contact.blocks)
+    for block, point in zip(contact.blocks, before, strict=True):
+        system = flux_newton.equations(contact.bath, block, at_stage, most)
+        settled, done = flux_newton.solve(block, system, point)
+        flux[block.rows] = settled.flux
+        points.append(settled)
+        solved &= done
+    x, gain, _ = contents(contact.bath, at_stage, flux)
+    return Action(gain / stretch, x, flux, tuple(points), solved)
 
 
 def surface(piece: Piece) -> Surface:
@@ -331,8 +389,8 @@ def surface(piece: Piece) -> Surface:
     for c, row in enumerate(bath.rows):
         if row.inventory is not None:
             left[c] = row.inventory
-    flux: Array = np.zeros((len(bath.rows), draws))
-    return Surface(bath, laws(bath), flux_newton.blocks(bath), [], flux, left, np.ones(draws, dtype=bool))
+    tied = np.flatnonzero((nu > 0).any(axis=0))
+    return Surface(bath, laws(bath), flux_newton.blocks(bath), (), left, np.ones(draws, dtype=bool), tied)
 
 
 def layer_share(piece: Piece, total: Array) -> Array:

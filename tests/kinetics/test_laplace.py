@@ -111,12 +111,13 @@ def test_extremes_stay_right(shape: str) -> None:
     """A surface-limited piece takes up g Bi Fo; at any time no number is lost."""
     g = {"slab": 1, "half-space": 1, "cylinder": 2, "sphere": 3}[shape]
     tiny = uptake(shape, np.array([0.0, 1e-90, 1e-30, 1e-12]), 1e-6)
-    assert tiny == pytest.approx(g * 1e-6 * np.array([0.0, 1e-90, 1e-30, 1e-12]), rel=1e-5)
-    assert uptake(shape, 1e-12, 1e-30)[0] == pytest.approx(g * 1e-42, rel=1e-6)
+    assert tiny == pytest.approx(g * 1e-6 * np.array([0.0, 1e-90, 1e-30, 1e-12]), rel=1e-5, abs=0)
+    assert uptake(shape, 1e-12, 1e-30)[0] == pytest.approx(g * 1e-42, rel=1e-6, abs=0)
     assert np.isfinite(uptake(shape, np.array([1e3, 1e9, 1e15, np.inf]), 1e8)).all()
     if shape != "half-space":
         assert uptake(shape, np.array([1e3, 1e9, 1e15]), 1.0) == pytest.approx(np.ones(3), rel=1e-6)
         lumped = uptake(shape, 1e10, np.array([1e-12, 1e-11, 1e-10, 1e-9]))
+        assert flux(shape, 1e10, 1e-12)[0] == pytest.approx(g * 1e-12 * np.exp(-g * 1e-2), rel=1e-5, abs=0)
         assert lumped == pytest.approx(-np.expm1(-g * 1e10 * np.array([1e-12, 1e-11, 1e-10, 1e-9])), rel=1e-5)
 
 
