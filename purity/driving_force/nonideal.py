@@ -161,7 +161,7 @@ def _stable(slopes: Array, x: Array) -> Mask:
     """Whether the Gibbs energy of the metal is convex in its solutes, from the Hessian scaled to x."""
     if len(x) == 1:
         return np.ones(x.shape[1], dtype=bool)
-    root: Array = np.sqrt(x[1:])
+    root: Array = np.maximum(np.sqrt(x[1:]), 1e-150)
     gain: Array = slopes[1:, 1:] - slopes[:1, 1:]
     gain = gain / root[None] - (slopes[1:, :1] - slopes[:1, :1]) * root[None] / x[0]
     hessian: Array = gain * root[:, None] + root[:, None] * root[None] / x[0]

@@ -13,6 +13,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from purity.constants import R
+from purity.driving_force import solution
 from purity.driving_force.equilibrium import Equilibrium, Outcome, System, equilibrium
 from purity.driving_force.nonideal import with_activity
 from purity.driving_force.sensitivity import sensitivity
@@ -584,6 +586,25 @@ def test_a_regular_solution_meets_its_own_law_of_mass_action() -> None:
     assert x[1] > 1e-3
     assert 2 * ln_a[2] + 3 * ln_a[1] == pytest.approx(g[3, 0] - 2 * g[2, 0] - 3 * g[1, 0], abs=1e-8)
     assert x[2] / x[1] == pytest.approx(2 / 3, rel=1e-9)
+
+
+@pytest.mark.parametrize("w", [-2.0, 1.5, 3.0, 12.0, 50.0])
+def test_a_regular_metal_on_its_own_pure_impurity_holds_the_terminal_solubility(w: float) -> None:
+    """Pure B beside a regular solution: ln x + w (1 - x)^2 = 0 in the host-rich metal."""
+    pair = made("A B", 0, ("metal", {"A": "A", "[B]": "B"}), ("B", {"B": "B"}))
+    g = np.array([[-5.0], [-4.0], [-4.0 - 0.5]])
+    model = solution.regular(w * R * 1000.0)
+
+    def coefficients(x: np.ndarray) -> np.ndarray:
+        return np.stack(solution.ln_gamma(model, x[0], x[1], 1000.0))
+
+    found = with_activity(pair, g, np.array([[1.0], [20.0]]), coefficients)
+    assert found.converged[0]
+    x = x_of(pair, found.equilibrium)[1, 0]
+    with mpmath.workdps(30):
+        exact = mpmath.findroot(lambda u: u + w * (1 - mpmath.exp(u)) ** 2 + 0.5, float(np.log(x)))
+    assert np.log(x) == pytest.approx(float(exact), abs=1e-9)
+    assert found.stable[0]
 
 
 def test_a_metal_that_runs_away_ends_where_the_wall_is_gone() -> None:
