@@ -267,3 +267,19 @@ def half_space_surface(z: Number) -> Array:
     from scipy.special import erfcx
 
     return np.asarray(1.0 - erfcx(np.asarray(z, dtype=float)))
+
+
+def half_space_content(depth: Number, z: Number = np.inf) -> Array:
+    """Content at a depth of that half-space over ceiling minus start (Crank 1975, eq. 3.35).
+
+    Parameters
+    ----------
+    depth : array
+        x / (2 sqrt(D t)).
+    z : array
+        h sqrt(t/D); inf: the surface is at the ceiling.
+    """
+    from scipy.special import erfc, erfcx
+
+    depth = np.asarray(depth, dtype=float)
+    return np.asarray(erfc(depth) - np.exp(-(depth**2)) * erfcx(depth + np.asarray(z)))

@@ -338,7 +338,7 @@ def hold(piece: Piece, course: Sequence[Step]) -> Passage:
     if len(piece.exposures) > 1:
         stay = drive * laplace.surface_integral(piece.shape, Fo, Bi) * piece.R**2 / D
         ledger = (of.supply - of.loss * piece.x0) * length - of.loss * stay
-        ledger[0] += gained - ledger.sum(axis=0)
+        ledger += (gained - ledger.sum(axis=0)) * (of.loss / np.maximum(loss, 1e-300))
     else:
         ledger = np.broadcast_to(gained, (len(piece.exposures), *gained.shape)).copy()
     no = np.zeros(piece.x0.shape[1], dtype=bool)
