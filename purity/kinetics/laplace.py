@@ -43,7 +43,11 @@ def impedance(shape: str, s: Complex) -> Complex:
     -------
     complex array
     """
-    q = np.sqrt(s)
+    return _impedance(shape, s, np.sqrt(s))
+
+
+def _impedance(shape: str, s: Complex, q: Complex) -> Complex:
+    """Impedance with the root q of s given."""
     if shape == "half-space":
         return np.asarray(1.0 / q)
     if shape == "cylinder":
@@ -86,11 +90,6 @@ def invert(transform: Callable[[Complex], Complex], Fo: Array, nodes: int = 16) 
     return total / Fo
 
 
-def _denominator(shape: str, s: Complex, Bi: Array, alpha: Array | None) -> Complex:
-    value = 1.0 / Bi + impedance(shape, s)
-    return value if alpha is None else value + GEOMETRY[shape] / (alpha * s)
-
-
 def _each_chunk(
     law: Callable[..., Complex],
     shape: str,
@@ -113,13 +112,25 @@ def _each_chunk(
         wanted = np.minimum(piece[1], BI_MAX) * longer
         fo, bi = np.clip(piece[0], FO_MIN, FO_MAX), np.clip(wanted, BI_MIN, BI_MAX)
         rest = piece[2] if alpha is not None else None
-
-        def transform(s: Complex, bi: Array = bi, rest: Array | None = rest) -> Complex:
-            return law(s, bi, _denominator(shape, s, bi, rest))
-
-        value = invert(transform, fo, nodes) * np.minimum(wanted / BI_MIN, 1.0) * longer**power
+        value = _sum(law, shape, fo, bi, rest, nodes) * np.minimum(wanted / BI_MIN, 1.0) * longer**power
         result[start : start + CHUNK] = np.where(piece[0] < FO_MIN, 0.0, value)
     return result.reshape(arrays[0].shape)
+
+
+def _sum(
+    law: Callable[..., Complex], shape: str, Fo: Array, Bi: Array, alpha: Array | None, nodes: int
+) -> Array:
+    """Sum over the contour; roots are taken of its points, not of every draw."""
+    per_Fo, resistance = 1.0 / Fo, 1.0 / Bi
+    root, total = np.sqrt(per_Fo), np.zeros(Fo.shape)
+    for z, factor in zip(*contour(nodes), strict=True):
+        s = z * per_Fo
+        below = _impedance(shape, s, np.sqrt(z) * root)
+        below += resistance
+        if alpha is not None:
+            below += GEOMETRY[shape] / (alpha * s)
+        total += (factor * law(s, Bi, below)).imag
+    return np.asarray(total * per_Fo)
 
 
 def uptake(shape: str, Fo: Number, Bi: Number, *, alpha: Number | None = None, nodes: int = 16) -> Array:
