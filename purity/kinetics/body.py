@@ -45,8 +45,6 @@ SHAPES: dict[str, str] = {
     "sphere": "sphere",
     "granules": "sphere",
 }
-#: Error above which the steps are doubled, at most twice.
-WANTED = 0.01
 #: Relative error of the exact hold.
 EXACT = 1e-7
 
@@ -141,10 +139,13 @@ def body(
     piece = _piece(x0, profile, form, molar_density, amount, diffusivity, with_skins(exposures))
     counts = STEPS_HISTORY if history else STEPS
     counts = counts if nodes is None else (nodes, nodes + nodes // 2, counts[2])
-    course, exact, error, modes = _resolve(piece, schedule, counts, history)
-    run = whole(piece, course, exact, history, modes)
-    modes = run.profile.shape[1]
-    limits, shares = control.shares(piece, course, exact, control.sample(len(run.flags)), modes)
+    course = steps(schedule, counts)
+    exact = not history and is_hold(piece, course)
+    plan = control.Plan(course, 25, EXACT, None) if exact else control.refine(piece, schedule, counts)
+    run = plan.run if plan.run is not None and not history else None
+    run = run or whole(piece, plan.course, exact, history, plan.modes)
+    draws = control.sample(len(run.flags))
+    limits, shares = control.shares(piece, course, exact, draws, run.profile.shape[1])
     return BodyRun(
         run.mean,
         run.film,
@@ -152,28 +153,12 @@ def body(
         run.ledger,
         limits,
         shares,
-        error,
+        plan.error,
         run.flags,
         run.attacked,
         run.history,
-        np.stack(np.broadcast_arrays(*_times(course))) if history else None,
+        np.stack(np.broadcast_arrays(*_times(plan.course))) if history else None,
     )
-
-
-def _resolve(
-    piece: Piece, schedule: Schedule, counts: tuple[int, int, float], history: bool
-) -> tuple[tuple[Step, ...], bool, float, int]:
-    """Steps fine enough, whether the hold is exact, the error left, and the modes."""
-    draws = control.sample(piece.x0.shape[1])
-    for doubling in range(3):
-        course = steps(schedule, counts)
-        if not history and is_hold(piece, course):
-            return course, True, EXACT, 25
-        error, modes = control.error(piece, course, steps(schedule, _twice(counts)), draws)
-        if error <= WANTED or doubling == 2:
-            break
-        counts = _twice(counts)
-    return course, False, error, modes
 
 
 def _piece(
@@ -193,6 +178,8 @@ def _piece(
     draws = (x0.shape[-1],)
     ln = np.where(np.isfinite(diffusivity.ln), diffusivity.ln, LEAST_LN_D)
     diffusivity = Curve(diffusivity.T, np.maximum(ln, LEAST_LN_D))
+    if profile is not None:
+        profile = np.broadcast_to(profile, (*profile.shape[:2], *draws))
     density, amount = (np.broadcast_to(np.asarray(v, dtype=float), draws) for v in (molar_density, amount))
     return Piece(
         SHAPES[form.shape],
@@ -211,7 +198,3 @@ def _times(course: Sequence[Step]) -> list[Array]:
     for step in course:
         times.append(np.asarray(times[-1] + step.length))
     return times
-
-
-def _twice(counts: tuple[int, int, float]) -> tuple[int, int, float]:
-    return 2 * counts[0], 2 * counts[1], counts[2] / 2.0

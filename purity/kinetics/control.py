@@ -8,17 +8,21 @@ Steps are fixed, so that differences in the logarithm are smooth.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from purity.kinetics.exposure import Array, Curve, scale
 from purity.kinetics.modes import GRADING
 from purity.kinetics.passage import Passage, whole
-from purity.kinetics.pieces import Flags, Index, Piece, Step, take, take_steps
+from purity.kinetics.pieces import Flags, Index, Piece, Step, steps, take, take_steps
+from purity.kinetics.schedule import Schedule
 
 #: Draws on which error and shares are estimated.
 SAMPLE = 64
+#: Error above which the steps are doubled, and how often.
+WANTED = 0.01
+DOUBLINGS = 2
 #: Step of ln rate in the differences that give elasticities.
 NUDGE = 1e-3
 #: Elasticity to time below which nothing but the ceiling holds the pickup back.
@@ -35,25 +39,64 @@ def pickup(run: Passage) -> Array:
     return np.asarray(run.ledger.sum(axis=0))
 
 
-def error(piece: Piece, course: Sequence[Step], finer: Sequence[Step], draws: Index) -> tuple[float, int]:
-    """Relative change of the pickup when steps and modes are refined, and the modes that were needed.
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """Steps and modes that are fine enough.
 
-    Returns
-    -------
-    float
-        95 % of the draws of the worst impurity lie below. Relative to the pickup, or to a thousandth of
-        the content where the pickup is less.
-    int
+    Parameters
+    ----------
+    course : tuple of Step
+    modes : int
+    error : float
+        Relative to the pickup, or to a thousandth of the content where the pickup is less: 95 % of the
+        draws of the worst impurity lie below.
+    run : Passage or None
+        The run of all draws, where the sample was all.
     """
-    few = take(piece, draws)
+
+    course: tuple[Step, ...]
+    modes: int
+    error: float
+    run: Passage | None
+
+
+def refine(piece: Piece, schedule: Schedule, counts: tuple[int, int, float]) -> Plan:
+    """Double steps (at most twice) and modes until a sample of the pickup stays where it is.
+
+    Parameters
+    ----------
+    piece : Piece
+    schedule : Schedule
+    counts : (int, int, float)
+        Steps of a hold and of a ramp, and first step of a hold, to begin with.
+    """
+    draws = sample(piece.x0.shape[1])
+    few, whole_lot = take(piece, draws), len(draws) == piece.x0.shape[1]
+    course = steps(schedule, counts)
     rough = whole(few, take_steps(course, draws), False)
-    count = rough.profile.shape[1]
-    least = min((n for n in GRADING if n > count), default=count)
-    fine = whole(few, take_steps(finer, draws), False, least=least)
+    for _ in range(DOUBLINGS):
+        counts = twice(counts)
+        finer, deeper = steps(schedule, counts), rough.profile.shape[1]
+        deepest = min((n for n in GRADING if n > deeper), default=deeper)
+        fine = whole(few, take_steps(finer, draws), False, least=deepest)
+        error = _change(few, rough, fine)
+        if error <= WANTED:
+            return Plan(course, deeper, error, fine if whole_lot else None)
+        course, rough = finer, fine
+    # Of second order: what the finer steps leave is a third of what they moved.
+    return Plan(course, rough.profile.shape[1], error / 3.0, rough if whole_lot else None)
+
+
+def twice(counts: tuple[int, int, float]) -> tuple[int, int, float]:
+    """Twice the steps."""
+    return 2 * counts[0], 2 * counts[1], counts[2] / 2.0
+
+
+def _change(piece: Piece, rough: Passage, fine: Passage) -> float:
     change = np.abs(pickup(fine) - pickup(rough))
-    size = np.maximum(np.abs(pickup(fine)), 1e-3 * np.maximum(few.x0, fine.mean))
+    size = np.maximum(np.abs(pickup(fine)), 1e-3 * np.maximum(piece.x0, fine.mean))
     relative = change / np.maximum(size, 1e-300)
-    return float(np.quantile(relative, 0.95, axis=1).max(initial=0.0)), count
+    return float(np.quantile(relative, 0.95, axis=1).max(initial=0.0))
 
 
 def elasticities(

@@ -126,7 +126,10 @@ def _flux(
     taken: Array,
     most: Array | float,
 ) -> Array:
-    ceiling, resistance = _at(surface.ceiling, k, stage), 1.0 / _at(surface.Bi, k, stage) + G
+    ceiling, resistance = (
+        _at(surface.ceiling, k, stage),
+        1.0 / np.maximum(_at(surface.Bi, k, stage), TINY) + G,
+    )
     if surface.reservoir is None:
         J = (ceiling - H) / resistance
     elif surface.sieverts:

@@ -60,8 +60,8 @@ class Passage:
         Gained through each contact.
     flags, attacked : (N,) bool arrays
         Not solved; surface beyond the dilute range.
-    coarse : bool
-        A part that matters is shorter than the basis resolves.
+    needs : int
+        Modes that resolve what is gained last.
     history : (I, K, N) array or None
     """
 
@@ -71,7 +71,7 @@ class Passage:
     ledger: Array
     flags: Flags
     attacked: Flags
-    coarse: bool
+    needs: int
     history: Array | None
 
 
@@ -116,12 +116,12 @@ def carry(piece: Piece, course: Sequence[Step], count: int = 25, *, history: boo
             record.append(state.mean + state.film)
     return Passage(
         state.mean,
-        state.film,
+        np.maximum(state.film, 0.0),
         _profile(piece, inside, state, count),
         state.ledger,
         ~contact.solved,
         np.asarray(state.peak > DILUTE),
-        _coarse(gained, [path / scale for path in paths], count),
+        _needed(gained, [path / scale for path in paths], count),
         np.stack(record, axis=1) if history else None,
     )
 
@@ -253,28 +253,24 @@ def _profile(piece: Piece, inside: Interior, state: _State, count: int) -> Array
     return np.ascontiguousarray(np.moveaxis(y, 0, 1))
 
 
-def _coarse(gained: Sequence[Array], Fo: Sequence[Array], count: int) -> bool:
-    """Tell whether a step that matters is followed by too little diffusion for the basis."""
-    least = modes.GRADING[count][2]
-    if not least:
-        return False
+def _needed(gained: Sequence[Array], Fo: Sequence[Array], count: int) -> int:
+    """Modes that resolve every step that matters: what is gained last has the least time to spread."""
     matters = MATTERS * np.asarray(sum(gained))
     ahead: Array = np.zeros(matters.shape)
+    thinnest = np.inf
     for gain, d in zip(reversed(gained), reversed(Fo), strict=True):
         ahead = ahead + d
-        if np.any((gain > matters) & (ahead < least)):
-            return True
-        if np.all(ahead >= least):
-            return False
-    return False
+        thinnest = min(thinnest, float(np.min(ahead, where=gain > matters, initial=np.inf)))
+        if np.all(ahead >= modes.GRADING[min(modes.GRADING)][2]):
+            break
+    return next(n for n, grading in modes.GRADING.items() if n >= count and thinnest >= grading[2])
 
 
 def finest(piece: Piece, course: Sequence[Step], *, history: bool = False, least: int = 25) -> Passage:
-    """Carry a piece with as many modes as its shortest part that matters needs."""
-    for count in (n for n in modes.GRADING if n >= least):
-        passage = carry(piece, course, count, history=history)
-        if not passage.coarse:
-            break
+    """Carry a piece with as many modes as what it gains last needs."""
+    passage = carry(piece, course, least, history=history)
+    if passage.needs > least:
+        return carry(piece, course, passage.needs, history=history)
     return passage
 
 
@@ -313,7 +309,7 @@ def whole(
         np.concatenate([p.ledger for p in parts], axis=-1),
         np.concatenate([p.flags for p in parts]),
         np.concatenate([p.attacked for p in parts]),
-        any(p.coarse for p in parts),
+        deepest,
         np.concatenate([p.history for p in parts if p.history is not None], axis=-1) if history else None,
     )
 
@@ -344,4 +340,4 @@ def hold(piece: Piece, course: Sequence[Step]) -> Passage:
     no = np.zeros(piece.x0.shape[1], dtype=bool)
     top = np.maximum(piece.x0, piece.x0 + drive * laplace.surface_content(piece.shape, Fo, Bi)).max(axis=0)
     mean = piece.x0 + gained
-    return Passage(mean, np.zeros_like(mean), np.moveaxis(y, 0, 1), ledger, no, top > DILUTE, False, None)
+    return Passage(mean, np.zeros_like(mean), np.moveaxis(y, 0, 1), ledger, no, top > DILUTE, 25, None)

@@ -149,7 +149,7 @@ def test_no_time_changes_nothing() -> None:
     run = march(
         SLAB,
         np.zeros((4, 3)),
-        Surface(np.array([0.0001, 1.0, 1e8]), 1.0, supply=0.1, reservoir=2.0),
+        Surface(np.array([0.0, 1.0, 1e8]), 1.0, supply=0.1, reservoir=2.0),
         start=0.2,
     )
     assert run.mean == pytest.approx(np.full(3, 0.2), rel=1e-15)
