@@ -2,42 +2,76 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Sequence
 
 from purity.report import words
 from purity.result import ChoiceResult, Line
 
+#: A pickup below this (ppm) of an element without limit and certificate is not worth a word.
+WORTH_A_WORD = 1e-3
 
-def notes(choice: ChoiceResult, *, methods: bool) -> Iterator[str]:
+
+def stands_alone(line: Line) -> bool:
+    """Say whether a line belongs in the table: it has a limit, a certified content or a gap."""
+    return line.limit is not None or line.start is not None or line.pickup is None
+
+
+def notes(
+    choice: ChoiceResult, shown: Sequence[Line], *, methods: bool, known: Iterable[str]
+) -> Iterator[str]:
     """Yield what the figures of a choice cannot be read without.
 
     Parameters
     ----------
     choice : ChoiceResult
+    shown : sequence of Line
+        Lines that stand in the table.
     methods : bool
         Name the methods of analysis here, because the table has no room for them.
+    known : iterable of str
+        Cautions printed once for the whole run, not to be repeated.
     """
     if methods:
         yield from _methods(choice)
-    lines = choice.lines
-    worst = [f"{line.impurity} {words.content(line.worst)}" for line in lines if line.worst is not None]
+    worst = [f"{line.impurity} {words.content(line.worst)}" for line in shown if line.worst is not None]
     if worst:
         yield f"worst position in the piece: {', '.join(worst)}"
-    alone = [line.impurity for line in lines if line.end is None and line.pickup is not None]
+    alone = [line.impurity for line in shown if line.end is None and line.pickup is not None]
     if alone:
-        yield f"+ is the pickup alone, the certificate does not name it: {', '.join(alone)}"
-    outside = [line.impurity for line in lines if line.extrapolated]
+        yield f"the pickup alone, for the certificate does not name it: {', '.join(alone)}"
+    yield from _left_out(line for line in choice.lines if line not in shown)
+    outside = [line.impurity for line in shown if line.extrapolated]
     if outside:
         yield f"records used outside their range (band widened): {', '.join(outside)}"
-    for line in lines:
-        if line.gap and line.pickup is None:
-            yield f"{line.impurity}: {line.gap}"
+    yield from _gaps(shown)
     if choice.host_loss_percent is not None and choice.host_loss_percent >= 0.01:
         yield f"metal lost: {words.figures(choice.host_loss_percent)} %"
     if choice.attack_um is not None:
         yield f"wall taken by the metal: {words.figures(choice.attack_um)} um"
+    told = set(known)
     for warning in choice.warnings:
-        yield f"warning: {warning}"
+        if warning not in told:
+            yield f"warning: {warning}"
+
+
+def _left_out(lines: Iterable[Line]) -> Iterator[str]:
+    """Elements that neither certificate nor limits name: the most they may gain."""
+    gained = [line for line in lines if line.pickup is not None and line.pickup.high >= WORTH_A_WORD]
+    gained.sort(key=lambda line: -line.pickup.high if line.pickup else 0.0)
+    if gained:
+        listed = ", ".join(
+            f"{line.impurity} {words.signed(line.pickup.high)}" for line in gained if line.pickup
+        )
+        yield f"neither certified nor limited, upper 95 % of the pickup: {listed}"
+
+
+def _gaps(lines: Iterable[Line]) -> Iterator[str]:
+    """What is not known or only partly, elements with the same reason together."""
+    by: dict[str, list[str]] = {}
+    for line in lines:
+        if line.gap and (line.end is not None or line.pickup is None):
+            by.setdefault(line.gap, []).append(line.impurity)
+    yield from (f"{', '.join(names)}: {gap}" for gap, names in by.items())
 
 
 def _methods(choice: ChoiceResult) -> Iterator[str]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from io import StringIO
 
 from rich.console import Console, RenderableType
@@ -76,7 +76,8 @@ def _parts(result: Result, width: int, detail: bool) -> Iterator[RenderableType]
         yield from _listed("sources", result.sources)
     stamp = result.stamp
     yield Text()
-    yield Text(CLOSING)
+    if not result.cautions:
+        yield Text(CLOSING)
     yield Text(
         f"purity {stamp.version}, data {stamp.data_hash}, scenario {stamp.scenario_hash}, "
         f"seed {stamp.seed}, {stamp.draws} draws"
@@ -112,7 +113,7 @@ def _step(
         yield Text("No choice could be ranked.")
     yield from _apart(step)
     for choice in ranked + [c for c in step.choices if c.rank is None] if detail else _shown(step, ranked):
-        yield from _elements(choice, width, detail)
+        yield from _elements(choice, width, detail, known=result.cautions)
 
 
 def _shown(step: StepResult, ranked: list[ChoiceResult]) -> list[ChoiceResult]:
@@ -127,10 +128,10 @@ def _grid() -> Table:
 def _overview(result: Result, step: StepResult, ranked: list[ChoiceResult]) -> Table:
     table = _grid()
     table.add_column("rank", no_wrap=True, justify="right")
-    table.add_column("choice", ratio=3)
+    table.add_column("choice", ratio=3, overflow="fold")
     table.add_column("chance over", no_wrap=True, justify="right")
     table.add_column("decides", no_wrap=True)
-    table.add_column("limited by", ratio=2)
+    table.add_column("limited by", ratio=2, overflow="fold")
     table.add_column("allowance spent", no_wrap=True)
     for choice in ranked:
         line = _deciding(choice)
@@ -189,7 +190,9 @@ def _apart(step: StepResult) -> Iterator[RenderableType]:
             )
 
 
-def _elements(choice: ChoiceResult, width: int, detail: bool) -> Iterator[RenderableType]:
+def _elements(
+    choice: ChoiceResult, width: int, detail: bool, *, known: Iterable[str]
+) -> Iterator[RenderableType]:
     place = f"rank {choice.rank}" if choice.rank is not None else choice.state
     counted = f"{choice.assessed[0]} of {choice.assessed[1]} assessed"
     yield Text()
@@ -199,8 +202,9 @@ def _elements(choice: ChoiceResult, width: int, detail: bool) -> Iterator[Render
             f"indicative: measure {', '.join(choice.measure) or 'the assumed inputs'} first "
             f"({100 * choice.assumed_share:.0f} % of the band is assumed)"
         )
-    yield from _blocks(choice, width)
-    for note in details.notes(choice, methods=width < WIDE):
+    lines = [line for line in choice.lines if detail or details.stands_alone(line)]
+    yield from _blocks(lines, width)
+    for note in details.notes(choice, lines, methods=width < WIDE, known=known):
         yield _indented(note)
     if detail:
         yield from (_indented(line) for line in details.choice(choice))
@@ -222,26 +226,26 @@ def worst_first(lines: Iterable[Line]) -> list[Line]:
     return sorted(lines, key=place)
 
 
-def _blocks(choice: ChoiceResult, width: int) -> Iterator[Table]:
+def _blocks(lines: Sequence[Line], width: int) -> Iterator[Table]:
     """Metals, then gas formers, in columns of one width."""
-    cells = {line.impurity: _cells(line, wide=width >= WIDE) for line in choice.lines}
-    name_width = min(14, max((len(title) for title in (*cells, *BLOCKS)), default=0))
+    cells = {line.impurity: _cells(line, wide=width >= WIDE) for line in lines}
+    name_width = max(7, *(min(14, len(name)) for name in cells), 0)
     widths = [
         max(len(part) for row in (FIGURES, *cells.values()) for part in row[column].split("\n"))
         for column in range(len(FIGURES))
     ]
     for block in BLOCKS:
-        lines = worst_first(line for line in choice.lines if line.block == block)
-        if not lines:
+        inside = worst_first(line for line in lines if line.block == block)
+        if not inside:
             continue
         table = _grid()
-        table.add_column(block, width=name_width)
+        table.add_column(block, width=name_width, overflow="fold")
         for title, column_width in zip(FIGURES, widths, strict=True):
             table.add_column(title, width=column_width, justify="right", no_wrap=True)
         if width >= WIDE:
             table.add_column("spent", width=9, no_wrap=True)
-        table.add_column("limited by", ratio=1)
-        for line in lines:
+        table.add_column("limited by", ratio=1, overflow="fold")
+        for line in inside:
             table.add_row(
                 Text(line.impurity),
                 *map(Text, cells[line.impurity]),
@@ -275,7 +279,7 @@ def _routes(result: Result, width: int) -> Iterator[RenderableType]:
     yield Text("-" * width)
     table = _grid()
     table.add_column("rank", no_wrap=True, justify="right")
-    table.add_column("one choice for every step", ratio=1)
+    table.add_column("one choice for every step", ratio=1, overflow="fold")
     table.add_column("chance over", no_wrap=True, justify="right")
     table.add_column("decides", no_wrap=True)
     for route in ranked[:ROUTES_SHOWN]:

@@ -48,7 +48,7 @@ def content(ppm: float, digits: int = 2) -> str:
         return figures(ppm, digits)
     ppb = 1000 * ppm
     if abs(ppb) < 1e-3:
-        return f"{'-' if ppb < 0 else ''}< 0.001 ppb"
+        return "~0"
     return f"{figures(ppb, digits)} ppb"
 
 
@@ -108,7 +108,7 @@ def bar(spent: float | None, word: Word | None) -> str:
 def limits_it(line: Line) -> str:
     """Return what holds the pickup of an impurity, with the contact that does most of it."""
     if line.held_back_by is None:
-        return line.gap or ""
+        return (line.gap or "") if line.pickup is None else ""
     main = max(line.contacts, key=lambda part: abs(part.pickup.median), default=None)
     words = HELD_BACK_BY.get(line.held_back_by, f"{{contact}}: {line.held_back_by}")
     return words.format(contact=main.contact if main else "all contacts")
@@ -117,7 +117,7 @@ def limits_it(line: Line) -> str:
 def start(line: Line, *, method: bool) -> str:
     """Return the certified content, "< limit" below detection, with its method where asked."""
     if line.start is None:
-        return "not given"
+        return "none"
     below = line.detection is not None and line.start.high <= line.detection
     text = f"< {content(line.detection or 0.0)}" if below else content(line.start.median)
     return f"{text} ({line.start_method})" if method and line.start_method else text
@@ -139,8 +139,13 @@ def ends(line: Line, *, wide: bool) -> tuple[str, str]:
 def _pickup(band: Band | None) -> tuple[str, str]:
     if band is None:
         return "no data", ""
-    high, median = (f"{'+' if value >= 0 else ''}{content(value)}" for value in (band.high, band.median))
-    return high, median
+    return signed(band.high), signed(band.median)
+
+
+def signed(ppm: float) -> str:
+    """Return a pickup with its sign."""
+    text = content(ppm)
+    return text if ppm < 0 or text in ("0", "~0") else f"+{text}"
 
 
 def span(band: Band | None) -> str:

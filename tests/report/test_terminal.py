@@ -102,3 +102,38 @@ def test_the_worst_element_stands_first(made_up: Result) -> None:
 def test_without_detail_one_choice_is_spelled_out(made_up: Result) -> None:
     assert render(made_up).count("assessed\n") == 2
     assert render(made_up, detail=True).count("assessed\n") == 6
+
+
+def test_what_nobody_asked_for_is_one_line_without_detail(made_up: Result) -> None:
+    step = made_up.steps[0]
+    silicon = next(line for line in step.choices[0].lines if line.impurity == "Si")
+    boron = replace(silicon, impurity="B", limit=None)
+    quiet = replace(boron, impurity="V", pickup=replace(boron.pickup, low=0.0, median=0.0, high=1e-5))
+    choice = replace(step.choices[0], lines=(*step.choices[0].lines, boron, quiet))
+    run = replace(made_up, steps=(replace(step, choices=(choice,)),), routes=())
+    brief = render(run, width=120)
+    assert "neither certified nor limited, upper 95 % of the pickup: B +0.12\n" in brief
+    assert not re.search(r"^B ", brief, re.MULTILINE)
+    full = render(run, width=120, detail=True)
+    assert re.search(r"^B .*no limit", full, re.MULTILINE)
+    assert re.search(r"^V .*~0 .*no limit", full, re.MULTILINE)
+
+
+def test_a_caution_of_the_whole_run_is_said_once(made_up: Result) -> None:
+    step = made_up.steps[0]
+    choice = replace(step.choices[0], warnings=(*made_up.cautions, "mind the sheath"))
+    text = " ".join(render(replace(made_up, steps=(replace(step, choices=(choice,)),)), width=120).split())
+    assert text.count(made_up.cautions[0]) == 1
+    assert "warning: mind the sheath" in text
+
+
+def test_a_reason_shared_by_lines_is_said_once(made_up: Result) -> None:
+    step = made_up.steps[0]
+    lines = tuple(replace(line, gap="members count with their gain") for line in step.choices[0].lines[:2])
+    run = replace(made_up, steps=(replace(step, choices=(replace(step.choices[0], lines=lines),)),))
+    assert "O, C: members count with their gain\n" in render(run, width=120)
+
+
+def test_a_run_without_cautions_still_says_what_it_is(made_up: Result) -> None:
+    text = " ".join(render(replace(made_up, cautions=())).split())
+    assert "not a release: analysis decides" in text

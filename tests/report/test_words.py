@@ -27,7 +27,8 @@ from purity.result import Band, Result
         (0.012, "12 ppb"),
         (-0.003, "-3.0 ppb"),
         (2.5e-6, "0.0025 ppb"),
-        (1e-9, "< 0.001 ppb"),
+        (1e-9, "~0"),
+        (-1e-9, "~0"),
     ],
 )
 def test_contents_have_two_figures_and_ppb_below_a_tenth(ppm: float, text: str) -> None:
