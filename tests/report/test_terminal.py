@@ -108,7 +108,7 @@ def test_what_nobody_asked_for_is_one_line_without_detail(made_up: Result) -> No
     step = made_up.steps[0]
     silicon = next(line for line in step.choices[0].lines if line.impurity == "Si")
     boron = replace(silicon, impurity="B", limit=None)
-    quiet = replace(boron, impurity="V", pickup=replace(boron.pickup, low=0.0, median=0.0, high=1e-5))
+    quiet = replace(boron, impurity="V", pickup=replace(boron.pickup, low=0.0, median=0.0, high=1e-7))
     choice = replace(step.choices[0], lines=(*step.choices[0].lines, boron, quiet))
     run = replace(made_up, steps=(replace(step, choices=(choice,)),), routes=())
     brief = render(run, width=120)
