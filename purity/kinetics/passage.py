@@ -275,15 +275,10 @@ def finest(piece: Piece, course: Sequence[Step], *, history: bool = False, least
 
 
 def is_hold(piece: Piece, course: Sequence[Step]) -> bool:
-    """Tell whether the exact hold applies."""
-    linear = not any(row for row in surface(take(piece, np.zeros(1, dtype=np.int64))).bath.rows)
-    return (
-        piece.profile is None
-        and linear
-        and bool(course)
-        and course[-1].part == course[0].part
-        and course[0].hold
-    )
+    """Tell whether the exact hold applies: one temperature, a uniform start, linear carriers."""
+    rows = surface(take(piece, np.zeros(1, dtype=np.int64))).bath.rows
+    one_T = all(step.hold and np.array_equal(step.T1, course[0].T1) for step in course)
+    return piece.profile is None and not rows and one_T
 
 
 def whole(

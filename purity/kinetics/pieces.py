@@ -35,6 +35,8 @@ LEAST_LN_D = np.log(1e-40)
 #: Largest Bi of one contact, beyond which the surface follows it within 1e-8.
 MOST_BI = 1e8
 LN_MOST = 600.0
+#: Largest resistance of a contact side, m2 s/mol: beyond it nothing passes.
+MOST_RESISTANCE = 1e100
 #: Limit by which a skin written as a carrier is known.
 SKIN = "skin"
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(3)
@@ -102,7 +104,10 @@ def steps(schedule: Schedule, counts: tuple[int, int, float]) -> tuple[Step, ...
 
 
 def with_skins(exposures: Sequence[Exposure]) -> tuple[Exposure, ...]:
-    """Write skins as carriers of an empty inventory, which they fill by what they take off the surface."""
+    """Write skins as carriers of an empty inventory, which they fill by what they take off the surface.
+
+    Exchange is kept within what an exponential can hold.
+    """
     written = []
     for exposure in exposures:
         skins = tuple(
@@ -110,7 +115,8 @@ def with_skins(exposures: Sequence[Exposure]) -> tuple[Exposure, ...]:
             for skin in exposure.skins
             if skin.nu.any()
         )
-        written.append(replace(exposure, carriers=exposure.carriers + skins, skins=()))
+        exchange = Curve(exposure.exchange.T, _bounded(exposure.exchange.ln))
+        written.append(replace(exposure, exchange=exchange, carriers=exposure.carriers + skins, skins=()))
     return tuple(written)
 
 
@@ -167,7 +173,7 @@ def bundle(curves: Sequence[Curve], draws: int) -> Bundle:
         wide = max(curves[c].ln.shape[-1] for c in members)
         T = curves[members[0]].T
         ln = np.stack([np.broadcast_to(curves[c].ln, (len(T), wide)) for c in members])
-        groups.append((np.array(members, dtype=np.int64), Curve(T, ln)))
+        groups.append((np.array(members, dtype=np.int64), Curve(T, _bounded(ln))))
     return Bundle(tuple(groups), (len(curves), draws))
 
 
@@ -248,7 +254,7 @@ def rates(of: Laws, step: Step, most: Array) -> Rates:
             m[s] += weight * np.exp(_bounded(ln_at(exposure.exchange, T)))
         linear += weight * np.exp(read(of.linear_g, T))
         rows += weight * np.exp(read(of.row_g, T))
-    resistance = np.where(of.open_rows[:, None], 0.0, 1.0 / rows)
+    resistance = np.where(of.open_rows[:, None], 0.0, np.minimum(1.0 / rows, MOST_RESISTANCE))
     return Rates(np.minimum(m * bath.density, most), linear, resistance)
 
 
