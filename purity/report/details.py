@@ -39,7 +39,7 @@ def notes(
     alone = [line.impurity for line in shown if line.end is None and line.pickup is not None]
     if alone:
         yield f"the pickup alone, for the certificate does not name it: {', '.join(alone)}"
-    yield from _left_out(line for line in choice.lines if line not in shown)
+    yield from _left_out(line for line in choice.lines if shown and line not in shown)
     outside = [line.impurity for line in shown if line.extrapolated]
     if outside:
         yield f"records used outside their range (band widened): {', '.join(outside)}"

@@ -79,7 +79,7 @@ def _parts(result: Result, width: int, detail: bool) -> Iterator[RenderableType]
     if not result.cautions:
         yield Text(CLOSING)
     yield Text(
-        f"purity {stamp.version}, data {stamp.data_hash}, scenario {stamp.scenario_hash}, "
+        f"purity {stamp.version}, data {stamp.data_hash[:12]}, scenario {stamp.scenario_hash[:12]}, "
         f"seed {stamp.seed}, {stamp.draws} draws"
     )
 
@@ -118,7 +118,9 @@ def _step(
 
 def _shown(step: StepResult, ranked: list[ChoiceResult]) -> list[ChoiceResult]:
     """The one choice whose elements are printed without --detail."""
-    return (ranked or [choice for choice in step.choices if choice.lines])[:1]
+    return (ranked or [choice for choice in step.choices if choice.state == "not ranked" and choice.lines])[
+        :1
+    ]
 
 
 def _grid() -> Table:
@@ -185,8 +187,8 @@ def _apart(step: StepResult) -> Iterator[RenderableType]:
             yield _indented(f"not ranked: {choice.name}, {counted}, no data for {reason}")
         elif choice.state == "attacked":
             yield _indented(
-                f"attacked: {choice.name}, {counted}; the wall dissolves without a ceiling in the "
-                "dilute range and no rate of attack is on record"
+                f"attacked: {choice.name}, {counted}; a contact dissolves in the metal beyond the dilute "
+                "range, and no rate of attack is on record"
             )
 
 
@@ -202,11 +204,13 @@ def _elements(
             f"indicative: measure {', '.join(choice.measure) or 'the assumed inputs'} first "
             f"({100 * choice.assumed_share:.0f} % of the band is assumed)"
         )
-    lines = [line for line in choice.lines if detail or details.stands_alone(line)]
+    # The dilute law has no number to give where the metal or its surface left it.
+    told = () if choice.state == "attacked" else choice.lines
+    lines = [line for line in told if detail or details.stands_alone(line)]
     yield from _blocks(lines, width)
     for note in details.notes(choice, lines, methods=width < WIDE, known=known):
         yield _indented(note)
-    if detail:
+    if detail and told:
         yield from (_indented(line) for line in details.choice(choice))
 
 

@@ -137,3 +137,14 @@ def test_a_reason_shared_by_lines_is_said_once(made_up: Result) -> None:
 def test_a_run_without_cautions_still_says_what_it_is(made_up: Result) -> None:
     text = " ".join(render(replace(made_up, cautions=())).split())
     assert "not a release: analysis decides" in text
+
+
+def test_an_attacked_choice_gives_no_numbers(made_up: Result) -> None:
+    step = made_up.steps[0]
+    pot = replace(step.choices[4], lines=step.choices[0].lines)
+    run = replace(made_up, steps=(replace(step, choices=(pot,)),), routes=())
+    for detail in (False, True):
+        text = render(run, detail=detail)
+        assert "attacked: steel pot" in text
+        assert "end 95 %" not in text
+        assert "driving force" not in text
