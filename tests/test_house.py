@@ -57,10 +57,13 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.march": NUMBERS | {"kinetics.modes"},
     "kinetics.pieces": NUMBERS
     | KINETICS_BASE
-    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.flux_newton"},
+    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage"},
+    "kinetics.surface": NUMBERS
+    | KINETICS_BASE
+    | {"kinetics.stage", "kinetics.flux_newton", "kinetics.pieces"},
     "kinetics.passage": NUMBERS
     | KINETICS_BASE
-    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.flux_newton", "kinetics.pieces"},
+    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage", "kinetics.pieces", "kinetics.surface"},
     "kinetics.stage": NUMBERS | KINETICS_BASE,
     "kinetics.flux_newton": NUMBERS | KINETICS_BASE | {"kinetics.stage"},
     "kinetics.arrow": NUMBERS | KINETICS_BASE | {"kinetics.stage", "kinetics.flux_newton"},

@@ -58,7 +58,7 @@ class BodyRun:
     mean : (I, N) array
         Mean dissolved contents, mol per mol of host.
     film : (I, N) array
-        Held by compounds that formed at the surface, mol per mol of host.
+        Held by compounds at the surface, mol per mol of host.
     profile : (I, M, N) array
         Modal amplitudes, for the next step.
     ledger : (C, I, N) array
@@ -103,6 +103,7 @@ def body(
     schedule: Schedule,
     exposures: Sequence[Exposure],
     *,
+    bound: Array | None = None,
     nodes: int | None = None,
     history: bool = False,
 ) -> BodyRun:
@@ -122,6 +123,9 @@ def body(
     schedule : Schedule
     exposures : sequence of Exposure
         Their areas should not add up to more than the surface of the piece.
+    bound : (I, N) array or None
+        Held at the surface at the start by compounds of the skins of the exposures, mol per mol of host;
+        it dissolves where they do. What no skin can hold stays bound.
     nodes : int or None
         Steps of a hold; a ramp takes half as many again.
     history : bool
@@ -136,7 +140,8 @@ def body(
     OutOfRangeError
         A shape that is no body, or a thickness that is not positive.
     """
-    piece = _piece(x0, profile, form, molar_density, amount, diffusivity, with_skins(exposures))
+    written, left = with_skins(exposures, bound, amount)
+    piece = _piece(x0, profile, form, molar_density, amount, diffusivity, written)
     counts = STEPS_HISTORY if history else STEPS
     counts = counts if nodes is None else (nodes, nodes + nodes // 2, counts[2])
     course = steps(schedule, counts)
@@ -148,7 +153,7 @@ def body(
     limits, shares = control.shares(piece, course, exact, draws, run.profile.shape[1])
     return BodyRun(
         run.mean,
-        run.film,
+        run.film if left is None else run.film + left,
         run.profile,
         run.ledger,
         limits,

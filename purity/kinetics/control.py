@@ -15,7 +15,7 @@ import numpy as np
 from purity.kinetics.exposure import Array, Curve, scale
 from purity.kinetics.modes import GRADING
 from purity.kinetics.passage import Passage, whole
-from purity.kinetics.pieces import Flags, Index, Piece, Step, steps, take, take_steps
+from purity.kinetics.pieces import SKIN, Flags, Index, Piece, Step, steps, take, take_steps
 from purity.kinetics.schedule import Schedule
 
 #: Draws on which error and shares are estimated.
@@ -127,7 +127,7 @@ def elasticities(
     """
     carriers = [c for exposure in piece.exposures for c in exposure.carriers]
     sides = sorted({c.limit for c in carriers if c.conductance is not None} - {"surface"})
-    stocked = any(c.inventory is not None and np.any(c.inventory > 0) for c in carriers)
+    stocked = any(c.inventory is not None and c.limit != SKIN for c in carriers)
     moving = ("diffusion", "surface", *sides)
     names = (*moving, *(("inventory",) if stocked else ()))
     n, copies = len(draws), 2 * len(names) + 1

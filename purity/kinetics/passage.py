@@ -14,24 +14,21 @@ from purity.kinetics.modes import CARRY, GAMMA
 from purity.kinetics.pieces import (
     MOST_BI,
     SKIN,
-    Action,
     Flags,
     Interior,
     Piece,
     Rates,
     Step,
-    Surface,
-    act,
     coefficients,
     interior,
     layer_share,
     rates,
     spread,
-    surface,
     take,
     take_steps,
 )
 from purity.kinetics.stage import Coefficients
+from purity.kinetics.surface import Action, Surface, act, surface
 
 #: A part of a schedule that gives more than this share of the uptake must be resolved by the basis.
 MATTERS = 0.01
@@ -138,7 +135,17 @@ def _begin(piece: Piece, inside: Interior, contacts: int) -> _State:
         y = np.tensordot(matrix, y, axes=1)
     empty = np.zeros((contacts, count, draws))
     flat = np.ascontiguousarray(y.reshape(len(y), -1))
-    return _State(flat, piece.x0.copy(), empty, np.zeros(piece.x0.shape), np.zeros(draws))
+    return _State(flat, piece.x0.copy(), empty, _held(piece), np.zeros(draws))
+
+
+def _held(piece: Piece) -> Array:
+    """What skins hold at the start, (I, N)."""
+    held: Array = np.zeros(piece.x0.shape)
+    for exposure in piece.exposures:
+        for carrier in exposure.carriers:
+            if carrier.limit == SKIN and carrier.inventory is not None:
+                held += carrier.nu[:, None] * (carrier.inventory / piece.amount)
+    return held
 
 
 def _laws(

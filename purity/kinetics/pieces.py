@@ -15,10 +15,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.kinetics import flux_newton, modes
-from purity.kinetics.exposure import FLOOR, Array, Carrier, Curve, Exposure, activity_at, ln_at, select
+from purity.kinetics import modes
+from purity.kinetics.exposure import Array, Carrier, Curve, Exposure, activity_at, ln_at, select
 from purity.kinetics.schedule import Schedule, fractions, segments
-from purity.kinetics.stage import HELD, Bath, Coefficients, Stage, contents, lay_out
+from purity.kinetics.stage import HELD, Bath, Coefficients
 
 Flags = NDArray[np.bool_]
 Index = NDArray[np.int64]
@@ -103,21 +103,41 @@ def steps(schedule: Schedule, counts: tuple[int, int, float]) -> tuple[Step, ...
     return tuple(found)
 
 
-def with_skins(exposures: Sequence[Exposure]) -> tuple[Exposure, ...]:
-    """Write skins as carriers of an empty inventory, which they fill by what they take off the surface.
+def with_skins(
+    exposures: Sequence[Exposure], bound: Array | None = None, amount: Array | float = 1.0
+) -> tuple[tuple[Exposure, ...], Array | None]:
+    """Write skins as carriers, whose inventory they fill by what they take off the surface.
 
     Exchange is kept within what an exponential can hold.
+
+    Parameters
+    ----------
+    exposures : sequence of Exposure
+    bound : (I, N) array or None
+        Already bound at the surface, mol per mol of host; given to the skins in their order.
+    amount : array
+        mol of host.
+
+    Returns
+    -------
+    exposures : tuple of Exposure
+    left : (I, N) array or None
+        Bound in nothing that is named here.
     """
     written = []
     for exposure in exposures:
-        skins = tuple(
-            Carrier(skin.name, skin.nu, skin.ln_k, np.ones(1), None, np.zeros(1), limit=SKIN)
-            for skin in exposure.skins
-            if skin.nu.any()
-        )
+        skins = []
+        for skin in (s for s in exposure.skins if s.nu.any()):
+            units, nu = np.zeros(1), skin.nu[:, None]
+            if bound is not None:
+                parts = np.where(nu > 0, bound / np.where(nu > 0, nu, 1.0), np.inf)
+                units = np.min(parts, axis=0) * amount
+                bound = np.maximum(bound - nu * units / amount, 0.0)
+            skins.append(Carrier(skin.name, skin.nu, skin.ln_k, np.ones(1), None, units, limit=SKIN))
         exchange = Curve(exposure.exchange.T, _bounded(exposure.exchange.ln))
-        written.append(replace(exposure, exchange=exchange, carriers=exposure.carriers + skins, skins=()))
-    return tuple(written)
+        carriers = exposure.carriers + tuple(skins)
+        written.append(replace(exposure, exchange=exchange, carriers=carriers, skins=()))
+    return tuple(written), bound
 
 
 def take(piece: Piece, draws: Index) -> Piece:
@@ -284,119 +304,6 @@ def coefficients(of: Laws, mean: Rates, T: Array | float) -> Coefficients:
         activity,
         mean.resistance,
     )
-
-
-def stretched(of: Coefficients, stretch: Array) -> Coefficients:
-    """Coefficients with the reach of the interior (I, N) put on every area."""
-    weight = of.weight * stretch
-    weight[0] = 1.0
-    return replace(of, supply=of.supply * stretch, loss=of.loss * stretch, weight=weight)
-
-
-@dataclass(slots=True)
-class Surface:
-    """The non-linear rows at the surface, where their solver stands, and what is left of inventories."""
-
-    bath: Bath
-    laws: Laws
-    blocks: tuple[flux_newton.Block, ...]
-    points: tuple[flux_newton.Point, ...]
-    left: Array
-    solved: Flags
-    tied: Index
-
-    def most(self, length: Array) -> Array:
-        """Largest flux that empties each inventory within a step, mol m-2 s-1."""
-        area = self.bath.area[self.bath.place - 1]
-        return np.asarray(self.left / np.maximum(area * length, 1e-300))
-
-
-@dataclass(frozen=True, slots=True)
-class Action:
-    """What the contacts do in a stage.
-
-    Parameters
-    ----------
-    gain : (S, I, N) array
-        Rate by contact, 1/s.
-    x : (L, I, N) array
-        Content below the surface, then at each contact.
-    flux : (C, N) array
-        Of the non-linear rows, mol m-2 s-1.
-    points : tuple of Point
-    solved : (N,) bool array
-    """
-
-    gain: Array
-    x: Array
-    flux: Array
-    points: tuple[flux_newton.Point, ...]
-    solved: Flags
-
-    def where(self, draws: Flags, other: Action) -> Action:
-        """Take the other where `draws`."""
-        if not draws.any():
-            return self
-        points = tuple(point.copy() for point in self.points)
-        for point, better in zip(points, other.points, strict=True):
-            point.put(draws, better.take(draws))
-        return Action(
-            np.where(draws, other.gain, self.gain),
-            np.where(draws, other.x, self.x),
-            np.where(draws, other.flux, self.flux),
-            points,
-            np.where(draws, other.solved, self.solved),
-        )
-
-
-def act(contact: Surface, of: Coefficients, H: Array, stretch: Array, span: Array, most: Array) -> Action:
-    """Solve one stage at the surface.
-
-    Parameters
-    ----------
-    contact : Surface
-    of : Coefficients
-    H : (I, N) array
-        Surface content without flux.
-    stretch : (I, N) array
-        Reach of the interior.
-    span : (N,) array
-        s.
-    most : (C, N) array
-        Largest flux of each row.
-    """
-    law = stretched(of, stretch)
-    beta = 1.0 / (1.0 + span * law.loss.sum(axis=0))
-    rest = H.copy()
-    rest[contact.tied] = np.maximum(rest[contact.tied], FLOOR)
-    below = beta * (rest + span * law.supply.sum(axis=0))
-    at_stage = Stage(law, span, beta, law.phi * below + law.rest)
-    flux: Array = np.zeros(most.shape)
-    solved, points = np.ones(H.shape[1], dtype=bool), []
-    before = contact.points or tuple(flux_newton.start(block, of, rest) for block in contact.blocks)
-    for block, point in zip(contact.blocks, before, strict=True):
-        system = flux_newton.equations(contact.bath, block, at_stage, most)
-        settled, done = flux_newton.solve(block, system, point)
-        flux[block.rows] = settled.flux
-        points.append(settled)
-        solved &= done
-    x, gain, _ = contents(contact.bath, at_stage, flux)
-    return Action(gain / stretch, x, flux, tuple(points), solved)
-
-
-def surface(piece: Piece) -> Surface:
-    """Lay out the carriers of a piece."""
-    count, draws = piece.x0.shape
-    bath = lay_out(piece.exposures, piece.density, piece.amount, count, draws)
-    # Every impurity lies in the same piece: none is set apart as passive.
-    nu = np.array([row.nu for row in bath.rows], dtype=float).reshape(len(bath.rows), count)
-    bath = replace(bath, reactive=np.arange(count), passive=np.arange(0), nu=nu)
-    left: Array = np.full((len(bath.rows), draws), np.inf)
-    for c, row in enumerate(bath.rows):
-        if row.inventory is not None:
-            left[c] = row.inventory
-    tied = np.flatnonzero((nu > 0).any(axis=0))
-    return Surface(bath, laws(bath), flux_newton.blocks(bath), (), left, np.ones(draws, dtype=bool), tied)
 
 
 def layer_share(piece: Piece, total: Array) -> Array:

@@ -20,8 +20,9 @@ from purity.kinetics.body import BodyRun, body
 from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, at
 from purity.kinetics.laplace import time_to, uptake
 from purity.kinetics.modes import basis, profile
-from purity.kinetics.pieces import STEPS, Piece, Step, act, coefficients, rates, steps, surface, with_skins
+from purity.kinetics.pieces import STEPS, Piece, Step, coefficients, rates, steps, with_skins
 from purity.kinetics.schedule import Schedule, T_at, first_crossing, hold
+from purity.kinetics.surface import act, surface
 from purity.scenario import Form
 
 Array = NDArray[np.float64]
@@ -532,6 +533,22 @@ def test_skin_holds_the_surface_at_saturation_and_dissolves_again() -> None:
     assert alone.film[0, 0] == 0.0
 
 
+def test_film_of_an_earlier_step_dissolves_when_heated() -> None:
+    skin = Skin("M2O3", np.array([3.0, 0.0]), curve(1e-9, 60e3))
+    touch = contact([], AREA, stack(curve(1e3), curve(1e3)), [skin])
+    one, bound = np.ones(1), np.array([[6e-6], [1e-7]])
+    D = stack(curve(1e-6, 60e3), curve(1e-6, 60e3))
+    heated = Schedule(np.array([0.0, 3600.0, 7200.0]), np.array([500.0, 1300.0, 1300.0]))
+    out = body(np.full((2, 1), 1e-8), None, form(), RHO * one, one, D, heated, [touch], bound=bound)
+    assert out.film[:, 0] == pytest.approx([0.0, 1e-7], abs=1e-18)
+    assert out.mean[:, 0] == pytest.approx([6.01e-6, 1e-8], rel=1e-9)
+    assert out.ledger == pytest.approx(np.zeros((1, 2, 1)), abs=1e-18)
+    cold = body(
+        np.full((2, 1), 1e-8), None, form(), RHO * one, one, D, hold(500.0, 60.0), [touch], bound=bound
+    )
+    assert cold.film[0, 0] > 5.9e-6
+
+
 def test_surface_beyond_the_dilute_range_is_told() -> None:
     out = run(
         [0.0], stack(curve(1e-12)), hold(1000.0, 60.0), [contact([gas([1], curve(0.5), 1.0, None)], AREA)]
@@ -592,7 +609,7 @@ def test_own_error_is_honest(exothermic: float) -> None:
 
 def _piece(x0: Array, D: Curve, exposures: Sequence[Exposure]) -> Piece:
     ones = np.ones(x0.shape[1])
-    return Piece("slab", 1e-3 * ones, x0, None, RHO * ones, ones, D, with_skins(exposures))
+    return Piece("slab", 1e-3 * ones, x0, None, RHO * ones, ones, D, with_skins(exposures)[0])
 
 
 def test_elasticities_to_rates_sum_to_that_to_time() -> None:
