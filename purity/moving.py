@@ -17,76 +17,88 @@ from numpy.typing import NDArray
 from purity.contacts import products
 from purity.contacts.setting import Exposed, Setting, diffusivity
 from purity.database import Found, Gap
-from purity.kinetics.advance import Host, Pickup, State, advance
+from purity.followers import NODES, Course, Part, move_followers, total, ways_of
+from purity.kinetics.advance import Host, State, advance
 from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin
-from purity.kinetics.groups import follow, follower, leached, loss, restrict, sink, tied
+from purity.kinetics.groups import follower, heavy, may_follow, restrict, tied, ties, turnover
 from purity.kinetics.schedule import Schedule
 
 Array = NDArray[np.float64]
 Index = NDArray[np.int64]
 
-#: Share of a content below which what a sink would carry off is left out.
-IDLE = 1e-4
-#: Nodes a segment of the bath and body integrators in the main job.
-NODES = 16
+#: Share of a content below which what a gas could bring or carry off is left out.
+IDLE = 1e-2
+#: Share of the draws in which a compound may act back on the leaders and still follow.
+RARE = 0.05
 #: ln of saturation beyond which a compound is taken to form.
 BEYOND = 1e-6
 #: Most rounds in which compounds and sinks that turn out to matter are added.
 ROUNDS = 5
 
 
-def total(state: State) -> Array:
-    """Return the whole content, dissolved, suspended and at the surface, (I, N) mol per mol of host."""
-    x = state.x + state.suspended
-    return x if state.surface is None else x + state.surface
-
-
-@dataclass(frozen=True, slots=True)
-class Part:
-    """One group of tied elements and what became of it.
-
-    `behind` are the elements whose course this group took as given; `shared` says what each contact
-    gives of another element with one atom of the following one: (contact, element, atoms).
-    """
-
-    index: Index
-    rows: tuple[int, ...]
-    pickup: Pickup
-    skins: tuple[tuple[Skin, tuple[Found, ...]], ...]
-    behind: tuple[int, ...] = ()
-    names: tuple[str, ...] = ()
-    shared: tuple[tuple[int, int, float], ...] = ()
-
-
 @dataclass(frozen=True, slots=True)
 class Plan:
-    """What is followed together: exposures without what is left out, and the skins found so far."""
+    """What is followed together: exposures without what is left out, skins, and compounds that lead."""
 
     exposures: tuple[Exposure, ...]
     skins: Mapping[str, tuple[Skin, tuple[Found, ...]]]
+    heavy: frozenset[str] = frozenset()
 
 
 def move(
     entered: State, setting: Setting, schedule: Schedule, exposed: Sequence[Exposed], history: bool
 ) -> list[Part]:
-    """Lead with what is tied together, then let the traces follow; add what turns out to matter."""
+    """Lead with what is tied together, then let the others follow; add what turns out to matter.
+
+    Parameters
+    ----------
+    entered : State
+        With what the contacts bring at once already in it.
+    setting : Setting
+    schedule : Schedule
+    exposed : sequence of Exposed
+    history : bool
+
+    Returns
+    -------
+    list of Part
+        Leading groups first.
+    """
     whole = tuple(one.exposure for one in exposed)
     seen = products.watched(setting)
-    plan = Plan(_without_idle_sinks(whole, entered, setting, schedule, seen), {})
+    plan = Plan(_without_idle_gases(whole, entered, setting, schedule, seen), {})
+    plan = replace(plan, skins=_present(plan, entered, setting, schedule, seen))
     leading: list[Part] = []
     for _ in range(ROUNDS):
-        leaders, traces = _leaders(plan, len(setting.impurities))
-        leading = [_advance(entered, setting, schedule, plan, index, history) for index in leaders]
-        grown = _grown(plan, whole, entered, setting, schedule, seen, _collect(entered.x, leading))
+        lead, groups, traces = _leaders(plan, len(setting.impurities))
+        leading = [_advance(entered, setting, schedule, lead, index, history) for index in groups]
+        x = _collect(entered.x, leading)
+        grown = _grown(plan, whole, groups, traces, entered, setting, schedule, seen, x)
         if grown is None:
             break
         plan = grown
-    return [*leading, *_followers(plan, traces, leading, entered, setting, schedule, history)]
+    course = Course(x, np.minimum(entered.x, x), {int(i) for group in groups for i in group}, seen)
+    ways = ways_of(plan.exposures, traces, course, setting, entered.x)
+    alone = [way for way in ways if not way.linear]
+    return [
+        *leading,
+        *(_advance(entered, setting, schedule, plan, np.array([way.element]), history) for way in alone),
+        *move_followers(
+            [way for way in ways if way.linear], plan.exposures, setting, schedule, entered, history
+        ),
+    ]
 
 
-def _leaders(plan: Plan, count: int) -> tuple[list[Index], dict[int, list[tuple[int, Carrier]]]]:
-    """Return the groups that lead, and by following element its traces with the contact they sit in."""
-    bare = [replace(e, carriers=tuple(c for c in e.carriers if not leached(c))) for e in plan.exposures]
+def _leaders(plan: Plan, count: int) -> tuple[Plan, list[Index], dict[int, list[tuple[int, Carrier]]]]:
+    """Return what leads, its groups, and by following element its traces with the contact they sit in.
+
+    Elements that a wall or a gas ties to others lead; one that only traces hold, or nothing but itself,
+    follows.
+    """
+    bare = [
+        replace(e, carriers=tuple(c for c in e.carriers if not may_follow(c) or c.name in plan.heavy))
+        for e in plan.exposures
+    ]
     skins = [skin for skin, _ in plan.skins.values()]
     lead = {int(i) for group in tied(bare, skins, count) if len(group) > 1 for i in group}
     traces: dict[int, list[tuple[int, Carrier]]] = {}
@@ -94,14 +106,14 @@ def _leaders(plan: Plan, count: int) -> tuple[list[Index], dict[int, list[tuple[
     for c, exposure in enumerate(plan.exposures):
         stay = []
         for carrier in exposure.carriers:
-            element = follower(carrier, lead)
+            element = None if carrier.name in plan.heavy else follower(carrier, lead)
             if element is None:
                 stay.append(carrier)
             else:
                 traces.setdefault(element, []).append((c, carrier))
         kept.append(replace(exposure, carriers=tuple(stay)))
-    groups = [g for g in tied(kept, skins, count) if not (len(g) == 1 and int(g[0]) in traces)]
-    return groups, traces
+    groups = [group for group in tied(kept, skins, count) if set(group.tolist()) & lead]
+    return replace(plan, exposures=tuple(kept)), groups, traces
 
 
 def _advance(
@@ -111,7 +123,6 @@ def _advance(
     plan: Plan,
     index: Index,
     history: bool,
-    behind: tuple[int, ...] = (),
 ) -> Part:
     """Move one group of tied elements."""
     rows, sub = [], []
@@ -135,54 +146,48 @@ def _advance(
     host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
     pickup = advance(state, host, setting.choice.form, schedule, sub, history=history, nodes=NODES)
     names = tuple(dict.fromkeys(carrier.name for one in sub for carrier in one.carriers))
-    return Part(index, tuple(rows), pickup, tuple(own.values()), behind, names)
+    return Part(index, tuple(rows), pickup, tuple(own.values()), (), names)
 
 
-def _followers(
+def _present(
     plan: Plan,
-    traces: Mapping[int, Sequence[tuple[int, Carrier]]],
-    leading: Sequence[Part],
     entered: State,
     setting: Setting,
     schedule: Schedule,
-    history: bool,
-) -> list[Part]:
-    """Move each element that only traces hold, at the lowest contents that the leading bath had."""
-    lowest = np.minimum(entered.x, _collect(entered.x, leading))
-    parts = []
-    for element, found in traces.items():
-        behind = tuple({int(i) for _, c in found for i in np.flatnonzero(c.nu)} - {element})
-        added: dict[int, list[Carrier]] = {}
-        for c, carrier in found:
-            added.setdefault(c, []).append(follow(carrier, element, lowest))
-        exposures = tuple(
-            replace(e, carriers=(*_alone(e, element), *added.get(c, ())))
-            for c, e in enumerate(plan.exposures)
-        )
-        part = _advance(entered, setting, schedule, Plan(exposures, {}), np.array([element]), history, behind)
-        shared = {(c, int(i), float(t.nu[i] / t.nu[element])) for c, t in found for i in np.flatnonzero(t.nu)}
-        parts.append(replace(part, shared=tuple(sorted(s for s in shared if s[1] != element))))
-    return parts
+    seen: Mapping[str, tuple[Array, float]],
+) -> dict[str, tuple[Skin, tuple[Found, ...]]]:
+    """Compounds of at most two leading elements that are beyond saturation as the lot enters."""
+    _, groups, _ = _leaders(plan, len(setting.impurities))
+    leaders = {int(i) for group in groups for i in group}
+    start = np.broadcast_to(schedule.T[0], (setting.draws.n,))
+    own = _simple(seen, leaders)
+    near = {name: products.skin(setting, name) for name in products.within_reach(own, entered.x, ())}
+    return {n: s for n, s in near.items() if products.saturation(s[0], entered.x, start).max() > BEYOND}
 
 
-def _alone(exposure: Exposure, element: int) -> tuple[Carrier, ...]:
-    return tuple(c for c in exposure.carriers if np.flatnonzero(c.nu).tolist() == [element])
+def _simple(seen: Mapping[str, tuple[Array, float]], leaders: set[int]) -> dict[str, tuple[Array, float]]:
+    """Compounds of at most two of the leading elements: no slag or mixed oxide forms in the bath."""
+    return {
+        f: s
+        for f, s in seen.items()
+        if np.count_nonzero(s[0]) <= 2 and set(np.flatnonzero(s[0]).tolist()) <= leaders
+    }
 
 
-def _without_idle_sinks(
+def _without_idle_gases(
     whole: tuple[Exposure, ...],
     entered: State,
     setting: Setting,
     schedule: Schedule,
     seen: Mapping[str, tuple[Array, float]],
 ) -> tuple[Exposure, ...]:
-    """Leave out what could only carry off, and would carry off next to nothing of what is there."""
+    """Leave out gases that tie elements and could move next to nothing of them."""
     dissolved = products.supported(seen, entered.x)
-    idle = _sinks(whole, dissolved, entered, setting, schedule, at_least=False)
+    idle = _moving_gases(whole, dissolved, entered, setting, schedule, at_least=False)
     return tuple(replace(e, carriers=tuple(c for c in e.carriers if c.name not in idle)) for e in whole)
 
 
-def _sinks(
+def _moving_gases(
     exposures: Sequence[Exposure],
     dissolved: Array,
     entered: State,
@@ -191,40 +196,63 @@ def _sinks(
     *,
     at_least: bool,
 ) -> set[str]:
-    """Names of sinks that would take more (or less) than IDLE of some content."""
+    """Names of gases that could move more (or less) than IDLE of some content."""
     hot = np.broadcast_to(schedule.T.max(axis=0), (setting.draws.n,))
     held = np.maximum(total(entered), dissolved)
     return {
         c.name
         for e in exposures
         for c in e.carriers
-        if sink(c)
-        and (loss(c, e.area, setting.amount, dissolved, held, setting.duration, hot) > IDLE) == at_least
+        if ties(c)
+        and (turnover(c, e.area, setting.amount, dissolved, held, setting.duration, hot) > IDLE) == at_least
     }
 
 
 def _grown(
     plan: Plan,
     whole: Sequence[Exposure],
+    groups: Sequence[Index],
+    traces: Mapping[int, Sequence[tuple[int, Carrier]]],
     entered: State,
     setting: Setting,
     schedule: Schedule,
     seen: Mapping[str, tuple[Array, float]],
     x: Array,
 ) -> Plan | None:
-    """Return the plan with the compounds that form and the sinks that count after all, or None."""
+    """Return the plan with the compound furthest beyond saturation and the gases that count, or None."""
+    leaders = {int(i) for group in groups for i in group}
+    own = _simple(seen, leaders)
     end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
-    near = {name: products.skin(setting, name) for name in products.within_reach(seen, x, plan.skins)}
-    beyond = {n: s for n, s in near.items() if products.saturation(s[0], x, end).max() > BEYOND}
+    near = {name: products.skin(setting, name) for name in products.within_reach(own, x, plan.skins)}
+    excess = {n: float(products.saturation(s[0], x, end).max() / s[0].nu.sum()) for n, s in near.items()}
+    worst = max(excess, key=lambda name: excess[name], default=None)
+    beyond = {worst: near[worst]} if worst is not None and excess[worst] > BEYOND else {}
     used = {c.name for e in plan.exposures for c in e.carriers}
-    busy = _sinks(whole, x, entered, setting, schedule, at_least=True) - used
-    if not beyond and not busy:
+    dissolved = products.supported(seen, x)
+    busy = _moving_gases(whole, dissolved, entered, setting, schedule, at_least=True) - used
+    weighty = _weighty(plan, traces, setting, np.minimum(entered.x, x))
+    if not beyond and not busy and not weighty:
         return None
     exposures = tuple(
         replace(e, carriers=tuple(c for c in o.carriers if c.name in used | busy))
         for e, o in zip(plan.exposures, whole, strict=True)
     )
-    return Plan(exposures, {**plan.skins, **beyond})
+    grown = Plan(exposures, {**plan.skins, **beyond}, plan.heavy | weighty)
+    present = _present(grown, entered, setting, schedule, seen) if weighty else {}
+    return replace(grown, skins={**grown.skins, **present})
+
+
+def _weighty(
+    plan: Plan, traces: Mapping[int, Sequence[tuple[int, Carrier]]], setting: Setting, x: Array
+) -> set[str]:
+    """Names of compounds that would act back on the leaders in more than RARE of the draws."""
+    density = setting.molar_density / setting.amount
+    return {
+        carrier.name
+        for element, found in traces.items()
+        for c, carrier in found
+        if heavy(carrier, element, plan.exposures[c], density, x, setting.duration).mean() > RARE
+    }
 
 
 def _diffusivity(setting: Setting, index: Index) -> Curve:

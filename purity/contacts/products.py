@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.contacts.setting import Setting, stoichiometry
-from purity.database import Found, Gap
+from purity.database import Found, Gap, Library
 from purity.draws import Draws
 from purity.driving_force.pure import Energy
 from purity.driving_force.substances import ln_dissolution
@@ -21,19 +21,23 @@ REACH = 15.0
 
 
 def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
-    """Return nu (I,) and the lowest nominal ln K of each compound that could form and is no wall."""
+    """Return nu (I,) and the lowest nominal ln K of each compound that could form in the melt."""
     if not setting.liquid:
         return {}
-    walls = {formula for c in setting.choice.contacts for formula in getattr(c.body, "phases", {})}
     seen: dict[str, tuple[Array, float]] = {}
-    for formula in setting.library.names("gibbs", "formula"):
+    for formula in _compounds(setting.library):
         nu = stoichiometry(setting, formula)
-        if formula in walls or nu is None or not nu.any():
+        if nu is None or not nu.any():
             continue
         energy = _dissolution(setting, formula, Draws.nominal())
         if not isinstance(energy, Gap):
             seen[formula] = (nu, float(energy.value.min()))
     return seen
+
+
+def _compounds(library: Library) -> list[str]:
+    rows = library.tables.get("gibbs", ())
+    return sorted({record.words["formula"] for record in rows if record.words["state"] == "solid"})
 
 
 def within_reach(seen: Mapping[str, tuple[Array, float]], x: Array, known: Collection[str]) -> list[str]:
@@ -77,6 +81,57 @@ def skin(setting: Setting, formula: str) -> tuple[Skin, tuple[Found, ...]]:
     if isinstance(energy, Gap) or nu is None:
         raise LookupError(f"no Gibbs energy of {formula} in {setting.host}")
     return Skin(formula, nu, Curve(setting.T, energy.value)), energy.found
+
+
+def follower_skin(
+    setting: Setting,
+    seen: Mapping[str, tuple[Array, float]],
+    element: int,
+    leaders: Collection[int],
+    x: Array,
+) -> tuple[Skin, tuple[Found, ...]] | None:
+    """Return the compound that caps an element, the others as they are, as a skin of that element alone.
+
+    Parameters
+    ----------
+    setting : Setting
+    seen : mapping
+        From :func:`watched`.
+    element : int
+    leaders : collection of int
+        Elements whose contents are given.
+    x : (I, N) array
+        Dissolved contents of the leaders, most of `element`.
+
+    Returns
+    -------
+    (Skin, records) or None
+        None where nothing comes near saturation. The name is that of the compound that caps in the middle
+        of the draws; each draw has the lowest cap.
+    """
+    middle = np.median(np.log(np.maximum(x, 1e-30)), axis=-1)
+    caps: dict[str, float] = {}
+    for formula, (nu, ln_k) in seen.items():
+        others = set(np.flatnonzero(nu).tolist()) - {element}
+        if nu[element] > 0 and others <= set(leaders):
+            rest = sum(nu[j] * middle[j] for j in others)
+            caps[formula] = float((ln_k - rest) / nu[element])
+    reach = float(np.log(np.maximum(x[element].max(), 1e-30))) + REACH
+    near = [f for f, cap in caps.items() if cap < min(reach, min(caps.values()) + REACH / 2)]
+    if not near:
+        return None
+    curves, records = [], []
+    for formula in near:
+        own, found = skin(setting, formula)
+        others = np.where(np.arange(len(own.nu)) == element, 0.0, own.nu)
+        curves.append((own.ln_k.ln - others @ np.log(np.maximum(x, 1e-30))) / own.nu[element])
+        records.extend(found)
+    lowest = np.min(np.stack(np.broadcast_arrays(*curves)), axis=0)
+    if np.all(lowest > np.log(np.maximum(x[element], 1e-30))):
+        return None
+    nu = np.zeros(len(setting.impurities))
+    nu[element] = 1.0
+    return Skin(min(near, key=lambda f: caps[f]), nu, Curve(setting.T, lowest)), tuple(records)
 
 
 def saturation(skin: Skin, x: Array, T: Array) -> Array:

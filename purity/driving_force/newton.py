@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from purity.driving_force.components import Basis, Layout, combine
 from purity.driving_force.interior import mix
+from purity.driving_force.pivots import exchange, serve
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -23,7 +24,7 @@ Draws = dict[str, NDArray[np.float64]]
 ADMIT = 1e-9
 #: Iterations after an interior-point solve, and from a nominal answer, which is close or of no use.
 LIMIT, WARM_LIMIT = 75, 12
-#: Share of its largest possible amount below which a shrinking phase is given up.
+#: Share of its first amount below which a shrinking phase is given up.
 _GONE = 1e-18
 _EPS = float(np.finfo(float).eps)
 
@@ -214,15 +215,23 @@ def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> 
     c = len(d["lam"])
     f: Array = np.where(valid, np.take_along_axis(point["f"], index, axis=0), 0.0)
     right: Array = -np.concatenate([point["e"], f]).T[:, :, None]
-    move: Array = solve(matrix, right)[:, :, 0].T
+    scaled, load, answer, col = _scaled(matrix, right)
+    gone = np.zeros(valid.shape, dtype=bool)
+    if (wild := _wild(answer, load)).any():
+        answer[wild] = np.linalg.pinv(scaled[wild], rcond=1e-12) @ load[wild]
+        held: Array = np.where(valid, np.take_along_axis(d["size"], index, axis=0), 0.0)[:, wild]
+        answer[wild], gone[:, wild] = exchange(scaled[wild], answer[wild], col[wild], held, f[:, wild])
+    move: Array = (answer[:, :, 0] * col).T
     largest: Array = np.abs(move[:c]).max(axis=0)
     move *= np.minimum(1.0, 15.0 / np.maximum(largest, 1e-300))
     d["lam"] = d["lam"] + move[:c]
     q: Array = np.zeros_like(d["size"])
     np.put_along_axis(q, index, np.where(valid, move[c:], 0.0), axis=0)
     d["size"] = d["size"] * np.where(q < -0.9, 0.1, 1.0 + q)
-    left: Mask = active & ~((d["size"] < _GONE * d["weight"]) & (q < 0.0) & ~layout.needed[:, None])
-    return left
+    left: Mask = active & ~((d["size"] < d["least"]) & (q < 0.0) & ~layout.needed[:, None])
+    dropped = np.zeros_like(active)
+    np.put_along_axis(dropped, index, gone & valid, axis=0)
+    return left & ~dropped
 
 
 def _measure(d: Draws, point: Draws, active: Mask) -> tuple[Mask, Mask]:
@@ -243,6 +252,7 @@ def _admit(d: Draws, point: Draws, active: Mask, settled: Mask) -> Mask:
     where = (worst[unstable], cols[unstable])
     active[where] = True
     d["size"][where] = 1e-6 * d["weight"][where]
+    d["least"][where] = _GONE * d["size"][where]
     good: Mask = settled & ~unstable
     return good
 
@@ -269,7 +279,7 @@ def polish(layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: in
     d = dict(draws)
     count = d["g"].shape[1]
     span = np.abs(d["g"]).max(axis=0)
-    d |= {"tol_e": 1e-12 + 4e-15 * span, "tol_f": 2e-14 * (1.0 + span)}
+    d |= {"tol_e": 1e-12 + 4e-15 * span, "tol_f": 2e-14 * (1.0 + span), "least": _GONE * d["size"]}
     now, live = active | layout.needed[:, None], np.arange(count)
     lam, last = d["lam"].copy(), np.zeros_like(active)
     u, n = np.zeros_like(d["g"]), np.zeros_like(d["g"])
@@ -291,7 +301,7 @@ def polish(layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: in
             live, before = live[keep], before[:, keep]
             d, now = {key: value[..., keep] for key, value in d.items()}, now[:, keep]
             point = {key: value[..., keep] for key, value in point.items()}
-        if (now != before).any():
+        if serve(layout, base, d, point, now) or (now != before).any():
             point = evaluate(layout, base, d, now)
         now = _step(layout, base, d, point, now)
     return Polished(lam, u, n, last, done, rounding)

@@ -1,9 +1,9 @@
 """Which impurities hang together in a step, and how a contact looks to some of them.
 
-Leached traces follow: a trace compound M_a O_b of a small inventory takes its ceiling from the oxygen
-that the bath has without it, x_M* = (K a / x_O^b)^(1/a), and gives its own oxygen to the ledger after.
-That keeps the coupled problem as small as its walls and gases. It is right to first order in the
-inventory over the bath's own content of the shared element.
+A compound M_a O_b of a wall follows where it cannot change the bath's oxygen by more than LIGHT: it takes
+its ceiling from the oxygen that the bath has without it, x_M* = (K a / x_O^b)^(1/a), and gives its own
+oxygen to the ledger after. That keeps the coupled problem as small as its gases, and is right to first
+order in what it adds. Where it weighs more it stays in the coupled bath.
 """
 
 from __future__ import annotations
@@ -15,10 +15,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.constants import DILUTE
-from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, activity_at, ln_at
+from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, activity_at, at, ln_at
 
 Array = NDArray[np.float64]
 Index = NDArray[np.int64]
+
+#: Share of a content below which what a wall compound adds to it does not act back on the bath.
+LIGHT = 0.1
 
 
 def tied(exposures: Sequence[Exposure], skins: Iterable[Skin], count: int) -> list[Index]:
@@ -58,18 +61,18 @@ def tied(exposures: Sequence[Exposure], skins: Iterable[Skin], count: int) -> li
 
 
 def restrict(exposure: Exposure, index: Index) -> Exposure:
-    """Return the exposure as some of the elements see it."""
+    """Return the exposure as some of the elements see it: only carriers that hold no others."""
     exchange = Curve(exposure.exchange.T, exposure.exchange.ln[index])
-    carriers = tuple(
-        replace(carrier, nu=carrier.nu[index]) for carrier in exposure.carriers if carrier.nu[index].any()
-    )
+    members = set(index.tolist())
+    own = [c for c in exposure.carriers if c.nu.any() and set(np.flatnonzero(c.nu).tolist()) <= members]
+    carriers = tuple(replace(carrier, nu=carrier.nu[index]) for carrier in own)
     films = tuple(replace(film, nu=film.nu[index]) for film in exposure.films if film.nu[index].any())
     return replace(exposure, exchange=exchange, carriers=carriers, skins=(), films=films)
 
 
-def leached(carrier: Carrier) -> bool:
-    """Return whether a carrier is a trace compound: several elements and an inventory."""
-    return carrier.inventory is not None and bool(np.any(carrier.inventory > 0)) and _count(carrier) > 1
+def may_follow(carrier: Carrier) -> bool:
+    """Return whether a carrier is a solid compound of several impurities, main or trace."""
+    return carrier.conductance is None and _count(carrier) > 1
 
 
 def _count(carrier: Carrier) -> int:
@@ -77,7 +80,7 @@ def _count(carrier: Carrier) -> int:
 
 
 def follower(carrier: Carrier, leaders: Collection[int]) -> int | None:
-    """Return the one element of a trace that nothing else in the coupled bath holds.
+    """Return the one element of a compound that nothing else in the coupled bath holds.
 
     Parameters
     ----------
@@ -88,15 +91,50 @@ def follower(carrier: Carrier, leaders: Collection[int]) -> int | None:
     Returns
     -------
     int or None
-        None where the trace has to stay in the coupled bath.
+        None where the compound has to stay in the coupled bath.
     """
-    if not leached(carrier):
+    if not may_follow(carrier):
         return None
     own = [int(i) for i in np.flatnonzero(carrier.nu) if int(i) not in leaders]
     return own[0] if len(own) == 1 else None
 
 
-def follow(carrier: Carrier, element: int, x: Array) -> Carrier:
+def heavy(
+    carrier: Carrier, element: int, exposure: Exposure, rho_per_mol: Array, x: Array, time: Array
+) -> NDArray[np.bool_]:
+    """Return the draws in which a wall compound could change its other elements by more than LIGHT.
+
+    Parameters
+    ----------
+    carrier : Carrier
+        Without inventory; one with an inventory is bounded by it and never heavy.
+    element : int
+        Its following element.
+    exposure : Exposure
+        The contact it sits in.
+    rho_per_mol : (N,) array
+        Molar density of the host over its amount, 1/m3.
+    x : (I, N) array
+        Lowest contents of the leaders.
+    time : (N,) array
+        s.
+
+    Returns
+    -------
+    (N,) bool array
+    """
+    n = x.shape[-1]
+    if carrier.inventory is not None:
+        return np.zeros(n, dtype=bool)
+    others = [int(j) for j in np.flatnonzero(carrier.nu) if int(j) != element]
+    top = follow(carrier, element, x, np.zeros(n)).ln_k.ln.max(axis=0)
+    rate = np.exp(exposure.exchange.ln[element].max(axis=0)) * exposure.area * rho_per_mol * time
+    gained = np.exp(top) * np.minimum(1.0, rate)
+    moved = [carrier.nu[j] / carrier.nu[element] * gained > LIGHT * x[j] for j in others]
+    return np.any(np.stack(np.broadcast_arrays(*moved)), axis=0)
+
+
+def follow(carrier: Carrier, element: int, x: Array, least: Array) -> Carrier:
     """Return a trace as its own element sees it, the others held at given contents.
 
     Parameters
@@ -106,6 +144,8 @@ def follow(carrier: Carrier, element: int, x: Array) -> Carrier:
     x : (I, N) array
         Contents of the bath at which the ceiling is taken: the lowest of the step, where the ceiling of
         the trace is highest.
+    least : (N,) array
+        Content of the element below which the trace is no sink: a trace gives and does not take.
 
     Returns
     -------
@@ -118,6 +158,7 @@ def follow(carrier: Carrier, element: int, x: Array) -> Carrier:
     rest = others @ np.log(np.maximum(x, 1e-30))
     ln_a = np.log(np.maximum(np.stack([activity_at(carrier, T) for T in carrier.ln_k.T]), 1e-300))
     ln_ceiling = np.minimum((carrier.ln_k.ln + ln_a - rest) / own, np.log(DILUTE))
+    ln_ceiling = np.maximum(ln_ceiling, np.log(np.maximum(least, 1e-30)))
     nu = np.zeros_like(carrier.nu)
     nu[element] = 1.0
     inventory = None if carrier.inventory is None else carrier.inventory * own
@@ -125,8 +166,10 @@ def follow(carrier: Carrier, element: int, x: Array) -> Carrier:
     return replace(carrier, nu=nu, ln_k=curve, activity=np.ones(1), inventory=inventory)
 
 
-def loss(carrier: Carrier, area: Array, amount: Array, x: Array, held: Array, time: Array, T: Array) -> float:
-    """Return the largest share of a content that a sink would take in a time, were it to last.
+def turnover(
+    carrier: Carrier, area: Array, amount: Array, x: Array, held: Array, time: Array, T: Array
+) -> float:
+    """Return the largest share of a content that a gas could bring or carry off in a time.
 
     Parameters
     ----------
@@ -136,19 +179,22 @@ def loss(carrier: Carrier, area: Array, amount: Array, x: Array, held: Array, ti
         m2, mol of host, s, K.
     x, held : (I, N) arrays
         Dissolved and whole contents.
+
+    Returns
+    -------
+    float
+        Middle of the draws, of the element that moves most.
     """
     if carrier.conductance is None:
         return np.inf
     members = np.flatnonzero(carrier.nu)
     ln_a = carrier.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(carrier.ln_k, T)
-    rate = np.exp(np.minimum(ln_at(carrier.conductance, T) + ln_a, 600.0)) * area * time / amount
+    reach = np.exp(np.minimum(ln_a, 600.0)) + activity_at(carrier, T)
+    rate = at(carrier.conductance, T) * reach * area * time / amount
     share = carrier.nu[members, np.newaxis] * rate / np.maximum(held[members], 1e-30)
-    return float(share.max())
+    return float(np.median(share, axis=-1).max())
 
 
-def sink(carrier: Carrier) -> bool:
-    """Return whether a carrier can only carry off, and ties several elements together."""
-    gives = bool(
-        np.any(np.asarray(carrier.activity.ln if isinstance(carrier.activity, Curve) else carrier.activity))
-    )
-    return not gives and _count(carrier) > 1
+def ties(carrier: Carrier) -> bool:
+    """Return whether a carrier is a gas that ties several elements together."""
+    return carrier.conductance is not None and _count(carrier) > 1

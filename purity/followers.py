@@ -1,0 +1,282 @@
+"""Elements that follow a bath: what nothing but themselves, a trace of a wall or a compound holds.
+
+They are moved together, each by its own contacts, at the contents that the leading elements had.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from purity.contacts import products
+from purity.contacts.setting import Setting
+from purity.database import Found
+from purity.kinetics.advance import HELD_BACK_BY, Pickup, State
+from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin, activity_at, ln_at
+from purity.kinetics.following import Channel, Followed, follow_along, shares
+from purity.kinetics.groups import follow
+from purity.kinetics.schedule import Schedule
+
+Array = NDArray[np.float64]
+Index = NDArray[np.int64]
+
+#: Steps a segment in the main job.
+NODES = 16
+#: ln that stands for no limit: exp of it and of its negative are finite.
+NO_LIMIT = 300.0
+
+
+def total(state: State) -> Array:
+    """Return the whole content, dissolved, suspended and at the surface, (I, N) mol per mol of host."""
+    x = state.x + state.suspended
+    return x if state.surface is None else x + state.surface
+
+
+@dataclass(frozen=True, slots=True)
+class Part:
+    """One group of tied elements and what became of it.
+
+    `behind` are the elements whose course this group took as given; `shared` says what each contact
+    gives of another element with one atom of the following one: (contact, element, atoms).
+    """
+
+    index: Index
+    rows: tuple[int, ...]
+    pickup: Pickup
+    skins: tuple[tuple[Skin, tuple[Found, ...]], ...]
+    behind: tuple[int, ...] = ()
+    names: tuple[str, ...] = ()
+    shared: tuple[tuple[int, int, float], ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Course:
+    """What the leaders did: contents at the end and lowest (I, N), who they are, what could form."""
+
+    end: Array
+    lowest: Array
+    leaders: set[int]
+    seen: Mapping[str, tuple[Array, float]]
+
+
+@dataclass(frozen=True, slots=True)
+class Way:
+    """How one element follows.
+
+    Parameters
+    ----------
+    element : int
+    carriers : tuple of (contact, Carrier)
+        One atom of the element a unit each, where `linear`.
+    cap : (Skin, records) or None
+        The compound that takes it out of solution.
+    behind : tuple of int
+        Leaders whose contents were used.
+    shared : tuple of (contact, element, atoms)
+        What a trace gives of a leader with one atom of this element.
+    linear : bool
+        False for an element that crosses in pairs (N2) and has to be integrated for itself.
+    """
+
+    element: int
+    carriers: tuple[tuple[int, Carrier], ...]
+    cap: tuple[Skin, tuple[Found, ...]] | None
+    behind: tuple[int, ...]
+    shared: tuple[tuple[int, int, float], ...]
+    linear: bool
+
+
+def ways_of(
+    exposures: Sequence[Exposure],
+    traces: Mapping[int, Sequence[tuple[int, Carrier]]],
+    course: Course,
+    setting: Setting,
+    x: Array,
+) -> list[Way]:
+    """Return the way of every element that does not lead and that something touches."""
+    touched = {int(i) for e in exposures for c in e.carriers for i in np.flatnonzero(c.nu)}
+    bound = {int(i) for nu, _ in course.seen.values() for i in np.flatnonzero(nu)}
+    following = sorted((touched | set(traces) | bound) - course.leaders)
+    return [_way(i, exposures, traces.get(i, ()), course, setting, x) for i in following]
+
+
+def _way(
+    element: int,
+    exposures: Sequence[Exposure],
+    traces: Sequence[tuple[int, Carrier]],
+    course: Course,
+    setting: Setting,
+    x: Array,
+) -> Way:
+    own = [
+        (c, k)
+        for c, e in enumerate(exposures)
+        for k in e.carriers
+        if np.flatnonzero(k.nu).tolist() == [element]
+    ]
+    linear = all(k.nu[element] == 1.0 for _, k in own)
+    rows = np.arange(len(x))[:, np.newaxis] == element
+    cap = products.follower_skin(setting, course.seen, element, course.leaders, np.where(rows, x, course.end))
+    least = x[element]
+    if cap is not None:
+        least = np.minimum(least, np.exp(cap[0].ln_k.ln.min(axis=0)))
+    made = [(c, follow(k, element, course.lowest, least)) for c, k in traces]
+    behind = {int(i) for _, k in traces for i in np.flatnonzero(k.nu)}
+    if cap is not None and cap[0].name in course.seen:
+        behind |= set(np.flatnonzero(course.seen[cap[0].name][0]).tolist())
+    shared = {(c, int(i), float(k.nu[i] / k.nu[element])) for c, k in traces for i in np.flatnonzero(k.nu)}
+    return Way(
+        element,
+        (*own, *made),
+        cap,
+        tuple(sorted((behind - {element}) & course.leaders)),
+        tuple(sorted(s for s in shared if s[1] != element)),
+        linear,
+    )
+
+
+def move_followers(
+    ways: Sequence[Way],
+    exposures: Sequence[Exposure],
+    setting: Setting,
+    schedule: Schedule,
+    entered: State,
+    history: bool,
+) -> list[Part]:
+    """Move all linear followers at once.
+
+    Returns
+    -------
+    list of Part
+        One an element, in the order of `ways`.
+    """
+    if not ways:
+        return []
+    index = np.array([way.element for way in ways])
+    n = setting.draws.n
+    rows, channels = _channels(ways, exposures, setting, n)
+    cap = _cap(ways, setting, n)
+    whole = total(State(entered.x[index], entered.suspended[index]))
+    done = follow_along(whole, channels, cap, schedule, nodes=NODES, history=history)
+    half = follow_along(whole, channels, cap, schedule, nodes=NODES // 2)
+    size = np.maximum(done.total, 1e-2 * np.maximum(whole, 1e-12))
+    error = np.quantile(np.abs(done.total - half.total) / (3.0 * size), 0.95, axis=-1)
+    return [_part(f, way, rows, done, float(error[f]), exposures, channels) for f, way in enumerate(ways)]
+
+
+def _channels(
+    ways: Sequence[Way], exposures: Sequence[Exposure], setting: Setting, n: int
+) -> tuple[list[int], list[Channel]]:
+    """One channel a contact for what it holds in excess of the metal, one for what crosses a resistance."""
+    rows, channels = [], []
+    for c, exposure in enumerate(exposures):
+        for held in (True, False):
+            mine = [
+                [k for s, k in way.carriers if s == c and (k.conductance is None) == held] for way in ways
+            ]
+            if any(mine):
+                rows.append(c)
+                channels.append(_channel(mine, ways, exposure, setting, n, held))
+    return rows, channels
+
+
+def _channel(
+    mine: Sequence[Sequence[Carrier]],
+    ways: Sequence[Way],
+    exposure: Exposure,
+    setting: Setting,
+    n: int,
+    held: bool,
+) -> Channel:
+    T = setting.T
+    shape = (len(ways), len(T), n)
+    metal, side = np.full(shape, -NO_LIMIT), np.full(shape, NO_LIMIT if held else -NO_LIMIT)
+    ceiling, inventory = np.full(shape, -NO_LIMIT), np.full((len(ways), n), np.inf)
+    per_mol = np.log(exposure.area / setting.amount)
+    for f, (way, carriers) in enumerate(zip(ways, mine, strict=True)):
+        if not carriers:
+            continue
+        rate = Curve(exposure.exchange.T, exposure.exchange.ln[way.element])
+        metal[f] = _on(rate, T) + per_mol + np.log(setting.molar_density)
+        tops, stores, slopes = [], [], []
+        for k in carriers:
+            ln_a = np.log(np.maximum(np.stack([np.broadcast_to(activity_at(k, t), (n,)) for t in T]), 1e-300))
+            tops.append(np.maximum(ln_a + _on(k.ln_k, T), -NO_LIMIT))
+            stores.append(np.inf if k.inventory is None else k.inventory / setting.amount)
+            if k.conductance is not None:
+                slopes.append(_on(k.conductance, T) - _on(k.ln_k, T))
+        ceiling[f] = np.max(np.stack(np.broadcast_arrays(*tops)), axis=0)
+        inventory[f] = np.sum(np.stack(np.broadcast_arrays(*stores)), axis=0)
+        if slopes:
+            side[f] = np.logaddexp.reduce(np.stack(np.broadcast_arrays(*slopes)), axis=0) + per_mol
+    return Channel(Curve(T, metal), Curve(T, side), Curve(T, ceiling), inventory)
+
+
+def _on(curve: Curve, T: Array) -> Array:
+    """Ln of a curve at knots, (K, N)."""
+    return np.stack([ln_at(curve, float(t)) for t in T])
+
+
+def _cap(ways: Sequence[Way], setting: Setting, n: int) -> Curve:
+    rows = []
+    for way in ways:
+        if way.cap is None:
+            rows.append(np.full((len(setting.T), n), NO_LIMIT))
+        else:
+            rows.append(np.broadcast_to(_on(way.cap[0].ln_k, setting.T), (len(setting.T), n)))
+    return Curve(setting.T, np.stack(rows))
+
+
+def _part(
+    f: int,
+    way: Way,
+    rows: Sequence[int],
+    done: Followed,
+    error: float,
+    exposures: Sequence[Exposure],
+    channels: Sequence[Channel],
+) -> Part:
+    n = done.total.shape[-1]
+    contacts = tuple(dict.fromkeys(c for c, _ in way.carriers))
+    ledger = np.zeros((len(contacts), 1, n))
+    for row, c in enumerate(rows):
+        if c in contacts:
+            ledger[contacts.index(c), 0] += done.ledger[row, f]
+    formed = ()
+    if way.cap is not None and np.mean(done.total[f] > done.x[f]) >= 0.5:
+        formed = (way.cap[0].name,)
+    pickup = Pickup(
+        State(done.x[f : f + 1], (done.total - done.x)[f : f + 1]),
+        ledger,
+        None,
+        None,
+        _shares(f, way, rows, done)[:, np.newaxis, np.newaxis],
+        error,
+        np.zeros(n, dtype=bool),
+        np.zeros(n, dtype=bool),
+        None if done.history is None else done.history[f : f + 1],
+        done.times,
+        formed,
+    )
+    names = tuple(dict.fromkeys(k.name for _, k in way.carriers))
+    skins = () if way.cap is None else (way.cap,)
+    return Part(np.array([way.element]), contacts, pickup, skins, way.behind, names, way.shared)
+
+
+def _shares(f: int, way: Way, rows: Sequence[int], done: Followed) -> Array:
+    """Shares of HELD_BACK_BY for one element, from the channel that moves it most."""
+    held = np.zeros(len(HELD_BACK_BY))
+    if not rows:
+        return held
+    channel, ceiling, inventory, metal = shares(done)
+    limits = [k.limit for c, k in way.carriers if c == rows[int(channel[f])]]
+    held[HELD_BACK_BY.index("ceiling")] = ceiling[f]
+    held[HELD_BACK_BY.index("inventory")] = inventory[f]
+    wetted = "wetting" not in limits and "inventory" not in limits
+    held[HELD_BACK_BY.index("melt transfer" if wetted else "wetting")] += metal[f]
+    rest = 1.0 - ceiling[f] - inventory[f] - metal[f]
+    held[HELD_BACK_BY.index("gas film")] += max(rest, 0.0)
+    return held
