@@ -20,7 +20,7 @@ DRIVING_FORCE = {
         *("equilibrium", "sensitivity", "nonideal"),
     )
 }
-EQUILIBRIUM = {f"driving_force.{n}" for n in ("components", "interior", "newton", "problem")}
+EQUILIBRIUM = {f"driving_force.{n}" for n in ("components", "interior", "pivots", "newton", "problem")}
 CONTACTS = {"contacts", "contacts.*"}
 BELOW_CONTACTS = NUMBERS | {"scenario", "database", "draws", "composition"}
 BELOW_ASSESS = (
@@ -83,7 +83,9 @@ ALLOWED: dict[str, set[str]] = {
     "driving_force.solution": NUMBERS,
     "driving_force.components": NUMBERS,
     "driving_force.interior": NUMBERS | {"driving_force.components"},
-    "driving_force.newton": NUMBERS | {"driving_force.components", "driving_force.interior"},
+    "driving_force.pivots": NUMBERS | {"driving_force.components"},
+    "driving_force.newton": NUMBERS
+    | {f"driving_force.{n}" for n in ("components", "interior", "pivots")},
     "driving_force.problem": NUMBERS | {"driving_force.components"},
     "driving_force.equilibrium": NUMBERS | EQUILIBRIUM,
     "driving_force.sensitivity": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},

@@ -61,7 +61,8 @@ class Equilibrium:
     residual : (N,) array
         Largest relative error of an element balance.
     rounding : (N,) array
-        Estimated rounding error of ln activity.
+        Estimated rounding error of ln activity; infinite where the metal is gone and the pure phases left
+        leave a potential open.
     state : (N,) int8 array
         :class:`Outcome`.
     start : (N,) int8 array
@@ -267,7 +268,6 @@ def _assemble(
     # A balance met to 1e-12 leaves a gap of that times the energies, which grow as T falls.
     allowed = CERTIFIED * np.maximum(1.0, np.abs(problem.g).max(axis=0) / 500.0)
     proved = (out.start >= 0) & (np.abs(gap) < allowed) & (residual < CERTIFIED)
-    proved &= out.rounding <= UNSURE
     lacking: Array = system.formula[:, problem.absent].sum(axis=1, keepdims=True)
     u: Array = np.where(lacking > 0, -np.inf, -own)
     u[problem.species] = out.u + problem.g - own[problem.species]
@@ -287,6 +287,8 @@ def _assemble(
     potentials[problem.elements] = np.where(problem.missing, -np.inf, potentials[problem.elements])
     present &= np.stack([(amounts[system.phase == p] > 0).any(axis=0) for p in range(len(present))])
     state = _outcome(system, amounts, present)
+    # Without a metal the amounts may be proved though some potential is not: they say that it is gone.
+    proved &= (out.rounding <= UNSURE) | (state == Outcome.HOST_CONSUMED)
     state[~proved] = Outcome.REFUSED
     for array in (u, amounts, potentials):
         array[:, ~proved] = np.nan

@@ -26,6 +26,8 @@ ADMIT = 1e-9
 LIMIT, WARM_LIMIT = 75, 12
 #: Share of its first amount below which a shrinking phase is given up.
 _GONE = 1e-18
+#: ln error of a balance at which rounding may stop the iteration.
+_LOOSE = 1e-6
 _EPS = float(np.finfo(float).eps)
 
 
@@ -205,7 +207,7 @@ def _rounding(matrix: Array, base: Basis) -> Array:
         answer[wild] = right.transpose(0, 2, 1) @ ((left.transpose(0, 2, 1) @ load[wild]) / floor[:, :, None])
     inverse = (answer * col[:, :, None])[:, :c]
     worst: Array = np.abs(base.species @ inverse).sum(axis=2).max(axis=1)
-    return worst * _EPS
+    return np.nan_to_num(worst * _EPS, nan=np.inf)
 
 
 def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> Mask:
@@ -235,11 +237,19 @@ def _step(layout: Layout, base: Basis, d: Draws, point: Draws, active: Mask) -> 
 
 
 def _measure(d: Draws, point: Draws, active: Mask) -> tuple[Mask, Mask]:
-    """Draws that are solved to rounding, and draws that ran away."""
+    """Draws that are solved to rounding, and draws that ran away.
+
+    A balance in which wall compounds cancel can stop above the tolerance; it is then solved as well as this
+    basis allows, and what is left counts as rounding error.
+    """
     off_e = np.abs(point["e"]).max(axis=0)
     off_f = np.where(active, np.abs(point["f"]), 0.0).max(axis=0, initial=0.0)
     settled: Mask = (off_e < d["tol_e"]) & (off_f < d["tol_f"])
-    return settled, ~np.isfinite(off_e + off_f + np.abs(d["size"]).max(axis=0, initial=0.0))
+    idle: Mask = (off_e > 0.5 * d["before"]) & (off_e < _LOOSE) & (off_f < ADMIT)
+    d["idle"] = np.where(idle, d["idle"] + 1.0, 0.0)
+    d["before"], d["left"] = off_e, np.where(settled, 0.0, off_e)
+    lost = ~np.isfinite(off_e + off_f + np.abs(d["size"]).max(axis=0, initial=0.0))
+    return settled | (d["idle"] >= 3.0), lost
 
 
 def _admit(d: Draws, point: Draws, active: Mask, settled: Mask) -> Mask:
@@ -280,6 +290,7 @@ def polish(layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: in
     count = d["g"].shape[1]
     span = np.abs(d["g"]).max(axis=0)
     d |= {"tol_e": 1e-12 + 4e-15 * span, "tol_f": 2e-14 * (1.0 + span), "least": _GONE * d["size"]}
+    d |= {"idle": np.zeros(count), "before": np.full(count, np.inf), "left": np.zeros(count)}
     now, live = active | layout.needed[:, None], np.arange(count)
     lam, last = d["lam"].copy(), np.zeros_like(active)
     u, n = np.zeros_like(d["g"]), np.zeros_like(d["g"])
@@ -293,7 +304,8 @@ def polish(layout: Layout, base: Basis, draws: Draws, active: Mask, *, limit: in
         if leave.any():
             out, keep = live[leave], ~leave
             part = {key: value[..., good] for key, value in point.items()}
-            rounding[live[good]] = _rounding(jacobian(layout, base, part, now[:, good])[0], base)
+            estimate = _rounding(jacobian(layout, base, part, now[:, good])[0], base)
+            rounding[live[good]] = np.maximum(estimate, d["left"][good])
             lam[:, out], last[:, out], done[out] = d["lam"][:, leave], now[:, leave], good[leave]
             u[:, out], n[:, out] = point["u"][:, leave], point["n"][:, leave]
             if not keep.any():

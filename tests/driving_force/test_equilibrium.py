@@ -372,6 +372,77 @@ def test_a_neutral_reaction_between_pure_phases_has_one_set_of_potentials() -> N
     assert r.ln_activity[1, 0] == pytest.approx(-35.0 + 5.0 + 8.0, abs=1e-6)
 
 
+YTTRIA = made(
+    "Cu Al Y N O",
+    0,
+    ("metal", {"Cu": "Cu", "[Al]": "Al", "[N]": "N", "[O]": "O", "[Y]": "Y"}),
+    ("Al2O3", {"Al2O3": "Al2 O3"}),
+    ("AlN", {"AlN": "Al N"}),
+    ("Y2O3", {"Y2O3": "Y2 O3"}),
+    ("Y3Al5O12", {"Y3Al5O12": "Y3 Al5 O12"}),
+    ("YAlO3", {"YAlO3": "Y Al O3"}),
+    ("YN", {"YN": "Y N"}),
+    ("gas", {"N2": "N2", "O2": "O2", "Al(g)": "Al", "Al2O(g)": "Al2 O", "Y(g)": "Y", "YO(g)": "Y O"}),
+)
+YTTRIA_METAL = [-6.62, -12.94, 1.01, -15.71, -14.34]
+YTTRIA_SOLID = [-153.13, -32.31, -179.94, -664.01, -169.36, -33.39]
+YTTRIA_GAS = [-25.96, -27.72, 5.1, -47.69, 10.49, -34.73]
+YTTRIA_G = np.array([*YTTRIA_METAL, *YTTRIA_SOLID, *YTTRIA_GAS])
+
+
+@pytest.mark.parametrize("trace", [1e-25, 1e-12, 1e-6])
+@pytest.mark.parametrize("walls", [("AlN", "Y2O3"), ("Al2O3", "Y2O3"), ("Al2O3", "YN"), ("AlN", "YN")])
+def test_compounds_that_depend_on_each_other_are_exchanged(walls: tuple[str, str], trace: float) -> None:
+    """Y2O3, YAlO3, Y3Al5O12 and Al2O3 lie on one line: of the many that form together, two can stay."""
+    names = list(YTTRIA.species)
+    fed = np.array([*YTTRIA.formula[:5], *(YTTRIA.formula[names.index(w)] for w in walls)])
+    n = np.array([1.0, trace, trace, trace, trace, 10.0, 10.0])[:, None]
+    rng = np.random.default_rng(1)
+    g = YTTRIA_G[:, None] + 0.5 * rng.standard_normal((len(YTTRIA_G), 100))
+    r = equilibrium(YTTRIA, g, n, inputs=fed)
+    assert (r.state != Outcome.REFUSED).all()
+    assert np.abs(r.gap).max() < 1e-9
+    assert r.residual.max() < 1e-9
+    assert r.rounding[r.state == Outcome.SOLVED].max() < 1e-6
+    assert np.log(r.saturation).max() < 1e-9
+
+
+def test_a_surplus_that_no_present_phase_holds_makes_one() -> None:
+    """Oxygen of lime dissolves in titanium and calcium does not: it must leave as a phase of its own."""
+    system = made(
+        "Ti Ca O",
+        0,
+        ("metal", {"Ti": "Ti", "[O]": "O"}),
+        ("lime", {"CaO": "Ca O"}),
+        ("calcium", {"Ca(l)": "Ca"}),
+    )
+    g = np.array([[-7.0], [-45.0], [-62.0], [-8.0]])
+    for surplus in (0.0, 1e-25, 1e-12):
+        r = equilibrium(
+            system,
+            g,
+            np.array([[1.0], [10.0], [surplus]]),
+            inputs=np.array([[1, 0, 0], [0, 1, 1], [0, 1, 0]]),
+        )
+        assert r.state[0] == Outcome.SOLVED
+        assert r.present[:, 0].all()
+        ln_x = -62.0 + 45.0 + 8.0
+        assert r.ln_activity[1, 0] == pytest.approx(ln_x, abs=1e-10)
+        assert r.amounts[3, 0] == pytest.approx(np.exp(ln_x) / (1 - np.exp(ln_x)) + surplus, rel=1e-9)
+
+
+def test_a_metal_used_up_by_pure_phases_is_reported_although_a_potential_stays_open() -> None:
+    """2 Al + 3 CuO = Al2O3 + 3 Cu to the last atom: no metal and no gas are left to fix the oxygen."""
+    system = made(
+        "Al Cu O", 0, ("metal", {"Al": "Al", "[Cu]": "Cu"}), ("alumina", {"Al2O3": "Al2 O3"}),
+        ("copper", {"Cu(s)": "Cu"}), ("gas", {"O2": "O2", "Al(g)": "Al"}),
+    )  # fmt: skip
+    g = np.array([[-6.0], [-7.0], [-150.0], [-9.0], [-28.0], [5.0]])
+    r = equilibrium(system, g, np.array([[2.0], [3.0]]), inputs=np.array([[1, 0, 0], [0, 1, 1]]))
+    assert r.state[0] == Outcome.HOST_CONSUMED
+    assert r.amounts[2:4, 0] == pytest.approx([1.0, 3.0], rel=1e-9)
+
+
 def test_inputs_that_no_species_can_hold_are_refused_by_name() -> None:
     with pytest.raises(IllPosedError, match="brings Ar"):
         equilibrium(
