@@ -65,6 +65,8 @@ def move(
         Leading groups first.
     """
     whole = tuple(one.exposure for one in exposed)
+    if not setting.liquid:
+        return _move_solid(whole, entered, setting, schedule, history)
     seen = products.watched(setting)
     plan = Plan(_without_idle_gases(whole, entered, setting, schedule, seen), {})
     plan = replace(plan, skins=_present(plan, entered, setting, schedule, seen))
@@ -87,6 +89,17 @@ def move(
             [way for way in ways if way.linear], plan.exposures, setting, schedule, entered, history
         ),
     ]
+
+
+def _move_solid(
+    whole: tuple[Exposure, ...], entered: State, setting: Setting, schedule: Schedule, history: bool
+) -> list[Part]:
+    """Move a solid: compounds with its host cap its surface; stored metal only grows films."""
+    stored = any(e.films for e in whole)
+    plan = Plan(whole, {} if stored else products.host_compounds(setting))
+    bare = [replace(e, carriers=()) if e.films else e for e in whole]
+    groups = tied([*bare, *(e for e in whole if e.films)] if stored else bare, (), len(setting.impurities))
+    return [_advance(entered, setting, schedule, plan, index, history) for index in groups]
 
 
 def _leaders(plan: Plan, count: int) -> tuple[Plan, list[Index], dict[int, list[tuple[int, Carrier]]]]:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from purity.contacts.setting import Setting, stoichiometry
 from purity.database import Found, Gap, Library
 from purity.draws import Draws
-from purity.driving_force.pure import Energy
+from purity.driving_force.pure import Energy, atoms
 from purity.driving_force.substances import ln_dissolution
 from purity.kinetics.exposure import Curve, Skin, ln_at
 
@@ -33,6 +33,22 @@ def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
         if not isinstance(energy, Gap):
             seen[formula] = (nu, float(energy.value.min()))
     return seen
+
+
+def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]]:
+    """Return, for each impurity of a solid, the compound with the host that saturates first."""
+    first: dict[int, tuple[float, str]] = {}
+    for formula in _compounds(setting.library):
+        nu = stoichiometry(setting, formula)
+        if nu is None or np.count_nonzero(nu) != 1 or set(atoms(formula)) == {setting.host}:
+            continue
+        energy = _dissolution(setting, formula, Draws.nominal())
+        if isinstance(energy, Gap):
+            continue
+        i = int(np.flatnonzero(nu)[0])
+        top = float(energy.value.max()) / float(nu[i])
+        first[i] = min(first.get(i, (np.inf, "")), (top, formula))
+    return {formula: skin(setting, formula) for _, formula in first.values()}
 
 
 def _compounds(library: Library) -> list[str]:

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from purity.constants import P0, R
 from purity.contacts.setting import Exposed, Setting, carrier_of, flat, spread_factor
 from purity.database import Found, Gap, Record
-from purity.driving_force.pure import atoms, gibbs_energy
+from purity.driving_force.pure import atoms, formation, gibbs_energy
 from purity.kinetics.exposure import Curve, Exposure, Film
 from purity.kinetics.films import thickness
 from purity.scenario import Atmosphere, Contact
@@ -17,6 +17,8 @@ Array = NDArray[np.float64]
 
 #: Oxygen fraction below which a gas grows no film of its own accord.
 INERT = 0.01
+#: Row of the film table for what grows in a package without its own source.
+PACKED = "dry inert"
 #: Relative humidity below which air counts as dry, and above which as humid.
 DRY, HUMID = 0.2, 0.6
 #: Relative humidity at which the table of surfaces gives the adsorbed water.
@@ -68,18 +70,25 @@ def stored(
     humidity : (N,) array
         Relative humidity around the pieces.
     supply : mapping of gas to (N,) array
-        mol that reach the pieces in the step; a gas that is not named is without limit.
+        mol that reach the pieces in the step; a gas that is not named is without limit. Any supply means
+        a package: no sulphur reaches the pieces, for what permeates at parts per billion is nothing.
     inputs, records, notes
         What stands behind the humidity and the supply.
     """
     form = setting.choice.form
     area = setting.sample(contact.area) if form is None else np.array([form.area])
     films = storage_films(setting, environment)
+    if supply:
+        films = [
+            *(f for f in films if _oxide(f[0])),
+            *(f for f in storage_films(setting, PACKED) if not _oxide(f[0])),
+        ]
     gaps: dict[str, tuple[Gap, ...]] = {}
     if not films:
         gap = Gap(f"films:{setting.host}/oxide/{environment}", "no film record for this metal in this gas")
         gaps["O"] = (gap,)
-    carriers = tuple(carrier_of(setting, gas, mol) for gas, mol in supply.items())
+    feeding = [gas for gas in supply if gas != "H2O" or any(water_feeds(setting, f[1].record) for f in films)]
+    carriers = tuple(carrier_of(setting, gas, supply[gas]) for gas in feeding)
     gain, water = _adsorbed(setting, area, humidity, supply.get("H2O"))
     by_element: dict[str, tuple[Found, ...]] = {}
     for element in setting.impurities:
@@ -89,6 +98,22 @@ def stored(
     rate = Curve(setting.T[:1], np.zeros((len(setting.impurities), 1, 1)))
     exposure = Exposure(contact.name, area, rate, carriers, (), tuple(film for film, _ in films))
     return Exposed(exposure, gain, names, by_element, inputs, gaps, notes)
+
+
+def _oxide(film: Film) -> bool:
+    return film.name == "oxide"
+
+
+def water_feeds(setting: Setting, record: Record) -> bool:
+    """Return whether the metal takes the oxygen of water to make this film, by their Gibbs energies."""
+    formula = record.words["formula"]
+    count = atoms(formula).get("O", 0.0) if formula != "*" else 0.0
+    T = float(setting.T[0])
+    film = formation(setting.library, formula, "solid", T, setting.draws.nominal()) if count else None
+    water = formation(setting.library, "H2O", "gas", T, setting.draws.nominal())
+    if film is None or isinstance(film, Gap) or isinstance(water, Gap):
+        return True
+    return float(film.value.ravel()[0]) / count < float(water.value.ravel()[0])
 
 
 def environment_of(oxygen: float, humidity: float) -> str:

@@ -157,7 +157,7 @@ def reduce(
     ------
     IllPosedError
     """
-    formula = np.asarray(system.formula, dtype=np.int64)
+    formula = system.formula
     given = np.eye(len(system.elements), dtype=np.int64) if inputs is None else np.asarray(inputs)
     _checked(system, g, amounts, given, held, gas_volume)
     is_held = np.array([e in held for e in system.elements])
@@ -167,21 +167,17 @@ def reduce(
     used = np.flatnonzero(given[:, elements].any(axis=1) & (amounts.max(axis=1) > 0.0))
     if not len(used):
         raise IllPosedError("nothing is put in: every amount is zero")
-    volatile = system.phases.index(GAS) if gas_volume is not None else -1
-    species = _members(system, elements, absent, volatile)
+    species, volatile = _members(system, elements, absent, gas_volume is not None)
     sub, brings = _rows(formula[np.ix_(species, elements)]), _rows(given[np.ix_(used, elements)])
     solid: Array = np.asarray(sub, dtype=float)
     matrix: Array = np.asarray(brings, dtype=float)
     fed = _floored(matrix, amounts[used])
-    named = [system.elements[e] for e in elements], [system.species[i] for i in species]
-    _posed(sub, brings, fed, *named, inputs is None)
+    _posed(system, species, elements, sub, brings, fed, inputs is None)
     phases, numbers = _renumber(system.phase[species])
     layout, columns, rows = components.layout(sub, numbers, volatile in phases)
     into = tuple(tuple(row[c] for c in columns) for row in brings)
-    largest = np.argsort(-np.median(fed, axis=1), kind="stable")
-    own = g.copy()
-    for e, value in held.items():
-        own -= formula[:, [system.elements.index(e)]] * value
+    largest = tuple(into[j] for j in np.argsort(-np.median(fed, axis=1), kind="stable"))
+    own = _less_held(system, g, held)
     total: Array = matrix.T @ fed
     problem = Problem(
         layout=layout,
@@ -194,7 +190,7 @@ def reduce(
         columns=np.array(columns, dtype=np.intp),
         absent=absent,
         used=used,
-        basis=components.basis(rows, into, tuple(into[j] for j in largest)),
+        basis=components.basis(rows, into, largest),
         missing=matrix.T @ amounts[used] <= 0.0,
         g=_lifted(layout, own[species]),
         fed=fed,
@@ -206,12 +202,13 @@ def reduce(
 
 
 def _members(
-    system: System, elements: NDArray[np.intp], absent: NDArray[np.intp], volatile: int
-) -> NDArray[np.intp]:
-    """Species that count, sorted by phase, a gas at fixed volume last.
+    system: System, elements: NDArray[np.intp], absent: NDArray[np.intp], fixed_volume: bool
+) -> tuple[NDArray[np.intp], int]:
+    """Species that count, sorted by phase, a gas at fixed volume last; and the number of that gas or -1.
 
     A phase made of held elements alone has no amount: its saturation is all there is to know.
     """
+    volatile = system.phases.index(GAS) if fixed_volume else -1
     keep: Mask = system.formula[:, absent].sum(axis=1) == 0
     bare: Mask = system.formula[:, elements].sum(axis=1) == 0
     for p in range(len(system.phases)):
@@ -220,7 +217,14 @@ def _members(
             keep &= ~members
     species = np.flatnonzero(keep)
     order = np.lexsort((species, system.phase[species], system.phase[species] == volatile))
-    return species[order]
+    return species[order], volatile
+
+
+def _less_held(system: System, g: Array, held: Mapping[str, Array]) -> Array:
+    own = g.copy()
+    for element, value in held.items():
+        own -= system.formula[:, [system.elements.index(element)]] * value
+    return own
 
 
 def _renumber(phase: NDArray[np.int64]) -> tuple[NDArray[np.intp], tuple[int, ...]]:
@@ -259,23 +263,25 @@ def _lifted(layout: components.Layout, g: Array) -> Array:
 
 
 def _posed(
+    system: System,
+    species: NDArray[np.intp],
+    elements: NDArray[np.intp],
     formula: components.Rows,
     brings: components.Rows,
     fed: Array,
-    elements: list[str],
-    species: list[str],
     bare: bool,
 ) -> None:
     """Refuse inputs that the species cannot hold, or can hold only with some species at exactly zero."""
-    names = elements if bare else [_written(row, elements) for row in brings]
-    outside = components.check_span(formula, brings, tuple(names), tuple(elements))
+    symbols, called = [system.elements[e] for e in elements], [system.species[i] for i in species]
+    names = symbols if bare else [_written(row, symbols) for row in brings]
+    outside = components.check_span(formula, brings, tuple(names), tuple(symbols))
     if outside and not bare:
         raise IllPosedError(
-            f"no combination of {', '.join(species)} has the composition of {names[outside[0]]}: "
+            f"no combination of {', '.join(called)} has the composition of {names[outside[0]]}: "
             "add a species that takes the surplus element."
         )
     single = {tuple(v > 0 for v in row) for row in formula if sum(v > 0 for v in row) == 1}
-    if len(single) == len(elements):
+    if len(single) == len(symbols):
         return
     middle: Array = np.median(fed, axis=1)
     a: Array = np.asarray(formula, dtype=float)
@@ -285,7 +291,7 @@ def _posed(
         zero = components.forced_zero(a, total)
         if zero == []:
             return
-    refuse(zero, species, elements)
+    refuse(zero, called, symbols)
 
 
 def _written(row: tuple[int, ...], elements: list[str]) -> str:

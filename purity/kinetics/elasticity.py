@@ -20,7 +20,7 @@ from purity.kinetics.stage import Index
 NUDGE = 1e-4
 TIGHT = 1e-6
 #: Draws and steps a segment on which elasticities are evaluated.
-SAMPLE = 32
+SAMPLE = 16
 NODES = 8
 #: Elasticity to time below which nothing but the ceiling holds the pickup back.
 AT_CEILING = 0.1

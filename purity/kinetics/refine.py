@@ -16,15 +16,17 @@ WANTED = 0.02
 #: Change on doubling the steps over the error that is left, for a method of second order.
 ORDER = 3.0
 #: Part of its start below which the rest of a content is not followed closely.
-REST = 1e-2
+REST = 0.1
+#: Relative error that tells another answer from the same one.
+OTHER = 0.1
 
 
 @dataclass(frozen=True, slots=True)
 class Refined:
     """A path, its relative error (95 % of the draws of the worst impurity lie below) and doubtful draws.
 
-    `doubtful` are draws that no method solved, and draws of a bath that can have two answers which
-    still move when the steps are doubled.
+    `doubtful` are draws that no method solved, and draws of a bath that can have two answers in which
+    more steps end elsewhere.
     """
 
     path: Path
@@ -60,7 +62,7 @@ def refined(case: Case, *, nodes: int = 32, history: bool = False) -> Refined:
     error = float(np.quantile(wrong, 0.95, axis=-1).max(initial=0.0))
     doubtful = ~path.solved
     if path.two_roots:
-        doubtful |= (wrong > WANTED).any(axis=0)
+        doubtful |= (wrong > OTHER).any(axis=0)
     return Refined(path, error, doubtful)
 
 
