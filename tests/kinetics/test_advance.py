@@ -158,3 +158,12 @@ def test_nothing_met_is_nothing_gained() -> None:
     done = advance(START, SOLID, SLAB, HOUR, [])
     assert np.array_equal(done.state.x, START.x)
     assert done.ledger.shape == (0, 2, 1)
+
+
+def test_first_look_gives_the_same_contents_without_error_and_shares() -> None:
+    exposures = [contact("wall", OXIDE), contact("gas", VAPOUR)]
+    full = advance(START, LIQUID, None, HOUR, exposures)
+    quick = advance(START, LIQUID, None, HOUR, exposures, check=False)
+    assert np.array_equal(quick.state.x, full.state.x)
+    assert quick.error == 0.0
+    assert not quick.shares.any()

@@ -259,11 +259,11 @@ def spread(draws: int, seed: int = 3) -> Case:
 
 def test_one_unknown_a_contact_gives_the_same_as_all_fluxes(monkeypatch: pytest.MonkeyPatch) -> None:
     bath = spread(100)
-    tied = integrate(bath, nodes=16)
+    tied = integrate(bath, nodes=16, tolerance=1e-6)
     layout = lay_out(bath.exposures, bath.density, bath.amount, *bath.total.shape)
     assert any(arrow.plan(block) is not None for block in flux_newton.blocks(layout))
     monkeypatch.setattr(arrow, "plan", lambda block: None)
-    general = integrate(bath, nodes=16)
+    general = integrate(bath, nodes=16, tolerance=1e-6)
     assert tied.x == pytest.approx(general.x, rel=1e-9)
 
 
