@@ -161,8 +161,7 @@ def reduce(
     given = np.eye(len(system.elements), dtype=np.int64) if inputs is None else np.asarray(inputs)
     _checked(system, g, amounts, given, held, gas_volume)
     is_held = np.array([e in held for e in system.elements])
-    some: Array = given.T.astype(float) @ amounts
-    present: Mask = (some.max(axis=1) > 0.0) & ~is_held
+    present: Mask = ((given.T.astype(float) @ amounts).max(axis=1) > 0.0) & ~is_held
     elements, absent = np.flatnonzero(present), np.flatnonzero(~present & ~is_held)
     used = np.flatnonzero(given[:, elements].any(axis=1) & (amounts.max(axis=1) > 0.0))
     if not len(used):
@@ -177,8 +176,7 @@ def reduce(
     layout, columns, rows = components.layout(sub, numbers, volatile in phases)
     into = tuple(tuple(row[c] for c in columns) for row in brings)
     largest = tuple(into[j] for j in np.argsort(-np.median(fed, axis=1), kind="stable"))
-    own = _less_held(system, g, held)
-    total: Array = matrix.T @ fed
+    own, total = _less_held(system, g, held), matrix.T @ fed
     problem = Problem(
         layout=layout,
         rows=rows,
