@@ -23,6 +23,8 @@ if TYPE_CHECKING:
     from purity.scenario import Scenario
 
 FAILED, BAD_INPUT, RISK_PASSED = 1, 2, 3
+#: Draws from which it pays to run the choices of a step in several processes.
+PARALLEL = 1024
 #: Draws in a block, the unit in which --draws counts.
 BLOCK = 256
 
@@ -219,7 +221,13 @@ def _assess(scenario: Scenario, library: Library, draws: Draws, route: tuple[str
     if sys.stderr.isatty():
         count = sum(len(step.choices) for step in scenario.steps)
         _note(f"{len(scenario.steps)} steps, {count} choices, {draws.n} draws ...")
-    return assess(scenario, library, draws, route=route)
+    workers = min(os.cpu_count() or 1, max(len(step.choices) for step in scenario.steps))
+    if workers < 2 or draws.n < PARALLEL:
+        return assess(scenario, library, draws, route=route)
+    from concurrent.futures import ProcessPoolExecutor
+
+    with ProcessPoolExecutor(workers) as executor:
+        return assess(scenario, library, draws, executor=executor, route=route)
 
 
 def _shown(result: Result, *, as_json: bool, detail: bool) -> str:

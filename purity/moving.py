@@ -20,7 +20,7 @@ from purity.database import Found, Gap
 from purity.followers import NODES, Course, Part, move_followers, total, ways_of
 from purity.kinetics.advance import Host, State, advance
 from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin
-from purity.kinetics.groups import follower, heavy, may_follow, restrict, tied, ties, turnover
+from purity.kinetics.groups import follower, heavy, idle, may_follow, restrict, spare, tied, ties, turnover
 from purity.kinetics.schedule import Schedule
 
 Array = NDArray[np.float64]
@@ -68,7 +68,8 @@ def move(
     if not setting.liquid:
         return _move_solid(whole, entered, setting, schedule, history)
     seen = products.watched(setting)
-    plan = Plan(_without_idle_gases(whole, entered, setting, schedule, seen), {})
+    plan = Plan(_without_idle(whole, entered, setting, schedule, seen), {})
+    plan = replace(plan, heavy=_heavy_beside_carbon(plan))
     plan = replace(plan, skins=_present(plan, entered, setting, schedule, seen))
     leading: list[Part] = []
     for _ in range(ROUNDS):
@@ -162,6 +163,20 @@ def _advance(
     return Part(index, tuple(rows), pickup, tuple(own.values()), (), names)
 
 
+def _heavy_beside_carbon(plan: Plan) -> frozenset[str]:
+    """Wall compounds that lead from the start: those beside a wall that holds an element of theirs down.
+
+    A wall of one pure element (carbon) ties up what it reacts with, so that the compounds answer.
+    """
+    pure = any(
+        c.conductance is None and c.inventory is None and np.count_nonzero(c.nu) == 1
+        for e in plan.exposures
+        for c in e.carriers
+    )
+    mixed = {c.name for e in plan.exposures for c in e.carriers if may_follow(c) and c.inventory is None}
+    return frozenset(mixed) if pure else frozenset()
+
+
 def _present(
     plan: Plan,
     entered: State,
@@ -187,38 +202,34 @@ def _simple(seen: Mapping[str, tuple[Array, float]], leaders: set[int]) -> dict[
     }
 
 
-def _without_idle_gases(
+def _without_idle(
     whole: tuple[Exposure, ...],
     entered: State,
     setting: Setting,
     schedule: Schedule,
     seen: Mapping[str, tuple[Array, float]],
 ) -> tuple[Exposure, ...]:
-    """Leave out gases that tie elements and could move next to nothing of them."""
+    """Leave out gases that tie elements and move next to nothing of them, and spare inventories."""
     dissolved = products.supported(seen, entered.x)
-    idle = _moving_gases(whole, dissolved, entered, setting, schedule, at_least=False)
-    return tuple(replace(e, carriers=tuple(c for c in e.carriers if c.name not in idle)) for e in whole)
+    out = _idle_gases(whole, dissolved, entered, setting, schedule)
+    held = np.maximum(total(entered), dissolved)
+    out |= {c.name for e in whole for c in e.carriers if spare(c, setting.amount, held)}
+    return tuple(replace(e, carriers=tuple(c for c in e.carriers if c.name not in out)) for e in whole)
 
 
-def _moving_gases(
-    exposures: Sequence[Exposure],
-    dissolved: Array,
-    entered: State,
-    setting: Setting,
-    schedule: Schedule,
-    *,
-    at_least: bool,
+def _idle_gases(
+    exposures: Sequence[Exposure], dissolved: Array, entered: State, setting: Setting, schedule: Schedule
 ) -> set[str]:
-    """Names of gases that could move more (or less) than IDLE of some content."""
     hot = np.broadcast_to(schedule.T.max(axis=0), (setting.draws.n,))
     held = np.maximum(total(entered), dissolved)
-    return {
-        c.name
-        for e in exposures
-        for c in e.carriers
-        if ties(c)
-        and (turnover(c, e.area, setting.amount, dissolved, held, setting.duration, hot) > IDLE) == at_least
-    }
+    found: set[str] = set()
+    for e in exposures:
+        gases = [c for c in e.carriers if c.conductance is not None and (ties(c) or c.nu.max() > 1)]
+        moved = {
+            c.name: turnover(c, e.area, setting.amount, dissolved, held, setting.duration, hot) for c in gases
+        }
+        found |= idle(moved, IDLE) & {c.name for c in gases if ties(c)}
+    return found
 
 
 def _grown(
@@ -242,7 +253,8 @@ def _grown(
     beyond = {worst: near[worst]} if worst is not None and excess[worst] > BEYOND else {}
     used = {c.name for e in plan.exposures for c in e.carriers}
     dissolved = products.supported(seen, x)
-    busy = _moving_gases(whole, dissolved, entered, setting, schedule, at_least=True) - used
+    tying = {c.name for e in whole for c in e.carriers if ties(c)}
+    busy = tying - _idle_gases(whole, dissolved, entered, setting, schedule) - used
     weighty = _weighty(plan, traces, setting, np.minimum(entered.x, x))
     if not beyond and not busy and not weighty:
         return None

@@ -7,11 +7,10 @@ from collections.abc import Collection, Mapping
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.contacts.setting import Setting, stoichiometry
+from purity.contacts.setting import Setting, dissolution, stoichiometry
 from purity.database import Found, Gap, Library
 from purity.draws import Draws
-from purity.driving_force.pure import Energy, atoms
-from purity.driving_force.substances import ln_dissolution
+from purity.driving_force.pure import atoms
 from purity.kinetics.exposure import Curve, Skin, ln_at
 
 Array = NDArray[np.float64]
@@ -29,7 +28,7 @@ def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
         nu = stoichiometry(setting, formula)
         if nu is None or not nu.any():
             continue
-        energy = _dissolution(setting, formula, Draws.nominal())
+        energy = dissolution(setting, formula, "solid", Draws.nominal())
         if not isinstance(energy, Gap):
             seen[formula] = (nu, float(energy.value.min()))
     return seen
@@ -42,7 +41,7 @@ def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]
         nu = stoichiometry(setting, formula)
         if nu is None or np.count_nonzero(nu) != 1 or set(atoms(formula)) == {setting.host}:
             continue
-        energy = _dissolution(setting, formula, Draws.nominal())
+        energy = dissolution(setting, formula, "solid", Draws.nominal())
         if isinstance(energy, Gap):
             continue
         i = int(np.flatnonzero(nu)[0])
@@ -93,7 +92,7 @@ def supported(seen: Mapping[str, tuple[Array, float]], x: Array) -> Array:
 
 def skin(setting: Setting, formula: str) -> tuple[Skin, tuple[Found, ...]]:
     """Return the skin of a compound, draw by draw, and its records."""
-    energy, nu = _dissolution(setting, formula, setting.draws), stoichiometry(setting, formula)
+    energy, nu = dissolution(setting, formula, "solid"), stoichiometry(setting, formula)
     if isinstance(energy, Gap) or nu is None:
         raise LookupError(f"no Gibbs energy of {formula} in {setting.host}")
     return Skin(formula, nu, Curve(setting.T, energy.value)), energy.found
@@ -153,9 +152,3 @@ def follower_skin(
 def saturation(skin: Skin, x: Array, T: Array) -> Array:
     """Return ln of the saturation of a compound, (N,), at contents (I, N) and temperatures (N,)."""
     return np.asarray(skin.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(skin.ln_k, T))
-
-
-def _dissolution(setting: Setting, formula: str, draws: Draws) -> Energy | Gap:
-    return ln_dissolution(
-        setting.library, setting.host, setting.phase, formula, "solid", setting.T[:, np.newaxis], draws
-    )

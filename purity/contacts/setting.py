@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from functools import reduce
+from functools import lru_cache, reduce
 
 import numpy as np
 from numpy.typing import NDArray
@@ -160,13 +160,50 @@ def carrier(
     nu = stoichiometry(setting, formula)
     if nu is None or not nu.any():
         return Gap(f"gibbs:{formula}/{state}", f"{formula} holds an element that is not followed here")
-    energy = ln_dissolution(
-        setting.library, setting.host, setting.phase, formula, state, setting.T[:, np.newaxis], setting.draws
-    )
+    energy = dissolution(setting, formula, state)
     if isinstance(energy, Gap):
         return energy
     made = Carrier(name or formula, nu, curve(setting, energy.value), activity, conductance, inventory, limit)
     return made, energy.found
+
+
+class _Same:
+    """Key of a cache by identity: a library never changes."""
+
+    __slots__ = ("library",)
+
+    def __init__(self, library: Library) -> None:
+        self.library = library
+
+    def __hash__(self) -> int:
+        return id(self.library)
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, _Same) and other.library is self.library
+
+
+@lru_cache(maxsize=1024)
+def _dissolution(
+    same: _Same, host: str, phase: str, formula: str, state: str, knots: tuple[float, ...], draws: Draws
+) -> Energy | Gap:
+    T = np.array(knots)[:, np.newaxis]
+    return ln_dissolution(same.library, host, phase, formula, state, T, draws)
+
+
+def dissolution(setting: Setting, formula: str, state: str, draws: Draws | None = None) -> Energy | Gap:
+    """Return ln K of a compound or gas at the knots of a step, (K, N); see :func:`ln_dissolution`.
+
+    Choices at the same temperatures share the answer.
+    """
+    return _dissolution(
+        _Same(setting.library),
+        setting.host,
+        setting.phase,
+        formula,
+        state,
+        tuple(setting.T.tolist()),
+        setting.draws if draws is None else draws,
+    )
 
 
 def carrier_of(setting: Setting, gas: str, mol: Array) -> Carrier:
@@ -278,6 +315,7 @@ __all__ = [
     "carrier_of",
     "curve",
     "diffusivity",
+    "dissolution",
     "exchange",
     "flat",
     "series",

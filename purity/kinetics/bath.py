@@ -1,8 +1,9 @@
 """A stirred melt between its contacts: contents, ledgers and what forms, over a temperature schedule.
 
-Time runs in fixed steps, 32 a segment: geometric in a hold, uniform in temperature on a ramp. The state
-is the total content; skins, at equilibrium with the bulk, share it between dissolved and suspended at
-every stage, so that what they hold dissolves again by itself.
+Time runs in fixed steps, 32 a segment: short at first and growing where the lot meets its contacts and in
+holds, uniform in temperature on later ramps. The state is the total content; skins, at equilibrium with the
+bulk, share it between dissolved and suspended at every stage, so that what they hold dissolves again by
+itself.
 
 Limits: solutes follow Henry's law, compounds have unit activity, skins need no nucleation, gases that
 buffer each other act as independent carriers at held pressures. A bath or surface that leaves the dilute
@@ -22,10 +23,14 @@ from purity.kinetics import arrow, flux_newton, passive
 from purity.kinetics.exposure import FLOOR, Array, Exposure, select
 from purity.kinetics.flux_newton import SETTLED, Block, Flags, Point
 from purity.kinetics.passive import GAMMA, GAUSS
-from purity.kinetics.schedule import Schedule, fractions, segments
+from purity.kinetics.schedule import Schedule, geometric, segments
 from purity.kinetics.sdirk import Change, Task
 from purity.kinetics.sdirk import step as reactive_step
 from purity.kinetics.stage import Bath, Coefficients, Index, coefficients, lay_out
+
+#: First step of the first segment and of a hold, in shares of an equal step. With 0.5 instead of 0.05 at
+#: the start, melts that lose oxygen as carbon monoxide in vacuum were 30 % off at 16 steps, not 2 %.
+MEETING, HOLDING = 0.05, 0.5
 
 Rates = tuple[Coefficients, Coefficients]
 Live = Index | slice
@@ -158,9 +163,16 @@ class _Melt:
 
 
 def steps(schedule: Schedule, nodes: int) -> Iterator[Step]:
-    """Cut a schedule into steps, `nodes` a segment."""
-    for part in segments(schedule):
-        edges = fractions(part, hold=nodes, ramp=nodes, first=0.03 if nodes <= 32 else 0.003)
+    """Cut a schedule into steps, `nodes` a segment.
+
+    The first segment, where the metal is far from rest with what it has just met, and holds begin with
+    short steps that grow; other ramps are uniform in temperature.
+    """
+    for number, part in enumerate(segments(schedule)):
+        if number == 0:
+            edges = geometric(nodes, MEETING / nodes)
+        else:
+            edges = geometric(nodes, HOLDING / nodes) if part.hold else np.linspace(0.0, 1.0, nodes + 1)
         for low, high in pairwise(edges):
             T0 = part.T1 + low * (part.T2 - part.T1)
             T1 = part.T1 + high * (part.T2 - part.T1)

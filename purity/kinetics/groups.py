@@ -8,7 +8,7 @@ order in what it adds. Where it weighs more it stays in the coupled bath.
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Sequence
+from collections.abc import Collection, Iterable, Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -22,6 +22,8 @@ Index = NDArray[np.int64]
 
 #: Share of a content below which what a wall compound adds to it does not act back on the bath.
 LIGHT = 0.1
+#: Share of every content below which an inventory is left out.
+SPARE = 1e-3
 
 
 def tied(exposures: Sequence[Exposure], skins: Iterable[Skin], count: int) -> list[Index]:
@@ -168,8 +170,8 @@ def follow(carrier: Carrier, element: int, x: Array, least: Array) -> Carrier:
 
 def turnover(
     carrier: Carrier, area: Array, amount: Array, x: Array, held: Array, time: Array, T: Array
-) -> float:
-    """Return the largest share of a content that a gas could bring or carry off in a time.
+) -> Array:
+    """Return the share of each content that a gas could bring or carry off in a time.
 
     Parameters
     ----------
@@ -182,17 +184,30 @@ def turnover(
 
     Returns
     -------
-    float
-        Middle of the draws, of the element that moves most.
+    (I,) array
+        Middle of the draws.
     """
     if carrier.conductance is None:
-        return np.inf
-    members = np.flatnonzero(carrier.nu)
+        return np.where(carrier.nu > 0, np.inf, 0.0)
     ln_a = carrier.nu @ np.log(np.maximum(x, 1e-30)) - ln_at(carrier.ln_k, T)
     reach = np.exp(np.minimum(ln_a, 600.0)) + activity_at(carrier, T)
     rate = at(carrier.conductance, T) * reach * area * time / amount
-    share = carrier.nu[members, np.newaxis] * rate / np.maximum(held[members], 1e-30)
-    return float(np.median(share, axis=-1).max())
+    share = carrier.nu[:, np.newaxis] * rate / np.maximum(held, 1e-30)
+    return np.asarray(np.median(share, axis=-1))
+
+
+def idle(shares: Mapping[str, Array], least: float) -> set[str]:
+    """Return the gases that move less than a share of every content, or of what another gas moves of it."""
+    most = np.max(np.stack(list(shares.values())), axis=0) if shares else np.zeros(0)
+    return {name for name, share in shares.items() if np.all(share < least * np.maximum(most, 1.0))}
+
+
+def spare(carrier: Carrier, amount: Array, held: Array) -> bool:
+    """Return whether all that a contact holds is next to nothing beside what the metal holds (SPARE)."""
+    if carrier.inventory is None or not np.any(carrier.inventory > 0):
+        return False
+    share = carrier.nu[:, np.newaxis] * carrier.inventory / (amount * np.maximum(held, 1e-30))
+    return bool(np.median(share, axis=-1).max() < SPARE)
 
 
 def ties(carrier: Carrier) -> bool:
