@@ -268,7 +268,7 @@ def _step(
     w = np.exp(-y)
     q = (system.rest + np.einsum("ucn,cn->un", B, flux)) * w - 1
     size = (system.rest + np.einsum("ucn,cn->un", B, np.abs(flux))) * w
-    M = weigh(nu, B * w[:, None])
+    M = _matrix(nu, B, w)
     right = system.ln_k - weigh(nu, y + q)
     wall = np.ones(len(nu), dtype=bool)
     wall[film] = False
@@ -293,6 +293,17 @@ def _step(
     if len(film):
         settled &= np.abs(noise_free).max(axis=0) < tolerance
     return Point(new_y, new_p, flux, bound), settled
+
+
+def _matrix(nu: Array, B: Array, w: Array) -> Array:
+    """Sum nu_cu w_u B_u over u, without a copy of B."""
+    M = np.empty((len(nu), *B.shape[1:]))
+    for c, row in enumerate(nu.tolist()):
+        first, *others = (u for u, atoms in enumerate(row) if atoms)
+        np.multiply(B[first], row[first] * w[first], out=M[c])
+        for u in others:
+            M[c] += B[u] * (row[u] * w[u])
+    return M
 
 
 def weigh(nu: Array, values: Array) -> Array:
