@@ -6,7 +6,7 @@ draws. Physics is :mod:`purity.passing`; what is said of it is :mod:`purity.line
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
 from functools import partial
@@ -22,10 +22,11 @@ from purity.database import Found, Gap, Library
 from purity.draws import Draws, sample
 from purity.driving_force.pure import atoms
 from purity.errors import ScenarioError
+from purity.followers import total
 from purity.kinetics.advance import State
 from purity.lines import Column, block, columns, counts, from_nothing, group_columns, group_line, line, to_ppm
-from purity.passing import Passed, pass_step, total
-from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StepResult
+from purity.passing import Passed, pass_step
+from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StateWord, StepResult
 from purity.risk import Standing, load, standings
 from purity.risk import state as standing_state
 from purity.scenario import Choice, Given, Lot, Material, Scenario, scenario_hash
@@ -98,7 +99,7 @@ def assess(
     }
     return Result(
         Stamp(__version__, library.data_hash, scenario_hash(scenario), draws.seed, draws.n),
-        _facts(scenario, walked.values(), draws),
+        _facts(scenario, walked.values()),
         tuple(steps),
         routes,
         cautions(scenario, library),
@@ -196,7 +197,7 @@ class _Weighed:
 
 
 def _weigh(passed: Passed, lot: Lot) -> _Weighed:
-    """Weigh every limited element; one without a certificate by what it gains alone, the least it can hold."""
+    """Weigh every limited element; one without a certificate by what it gains, the least it can hold."""
     found = columns(passed, lot)
     singles = [
         c if c.certified else from_nothing(c) for c in found.values() if not passed.gaps.get(c.element)
@@ -208,7 +209,7 @@ def _weigh(passed: Passed, lot: Lot) -> _Weighed:
     return _Weighed(tuple(c.element for c in rows), over, loads.reshape(len(rows), n))
 
 
-def _standing_state(passed: Passed, lot: Lot) -> tuple[str, tuple[int, int]]:
+def _standing_state(passed: Passed, lot: Lot) -> tuple[StateWord, tuple[int, int]]:
     needed = counts(lot)
     assessed = sum(not passed.gaps.get(element) for element in needed)
     attacked = bool(passed.attacked.mean() > 0.05)
@@ -231,7 +232,7 @@ def _step_result(
         [s for s, _ in states],
         [w.over for w in weighed],
         [w.loads for w in weighed],
-        blocks,  # type: ignore[misc]
+        blocks,
     )
     names = [one.choice.name for one in passed]
     done = [
@@ -244,7 +245,7 @@ def _step_result(
 
 def _choice_result(
     passed: Passed,
-    state: str,
+    state: StateWord,
     assessed: tuple[int, int],
     standing: Standing,
     weighed: _Weighed,
@@ -263,7 +264,7 @@ def _choice_result(
     return ChoiceResult(
         name=passed.choice.name,
         rank=standing.rank,
-        state=state,  # type: ignore[arg-type]
+        state=state,
         tied_with=tuple(names[j] for j in standing.tied_with),
         chance_over=standing.chance_over,
         chance_error=standing.chance_error,
@@ -304,7 +305,7 @@ def _assumed(
     """Share of the deciding band that comes from assumed inputs, and those inputs, first the largest."""
     from purity.draws import normal
 
-    if deciding not in found or not draws.blocks:
+    if deciding is None or deciding not in found or not draws.blocks:
         return None, ()
     givens = {g.key: g for one in passed.exposed for g in one.inputs if g.law != "exact"}
     inputs = {key: normal(draws, key)[0] for key in givens}
@@ -316,11 +317,11 @@ def _assumed(
     return assumed_share(drive, assumed), tuple(key for key in drive.shares if key in assumed)[:3]
 
 
-def _facts(scenario: Scenario, walked: object, draws: Draws) -> ScenarioFacts:
+def _facts(scenario: Scenario, walked: Iterable[Passed]) -> ScenarioFacts:
     lot = scenario.lot
     assumed = {
         given.key
-        for one in walked  # type: ignore[attr-defined]
+        for one in walked
         for exposed in one.exposed
         for given in exposed.inputs
         if given.assumed
@@ -368,7 +369,7 @@ def _routes(
         states,
         [w.over for w in weighed],
         [w.loads for w in weighed],
-        max(draws.blocks, 1),  # type: ignore[arg-type]
+        max(draws.blocks, 1),
     )
     results = [
         RouteResult(
@@ -384,8 +385,8 @@ def _routes(
     return tuple(sorted(results, key=lambda r: (r.rank is None, r.rank or 0)))
 
 
-def _route_state(legs: Sequence[Passed], lot: Lot) -> str:
-    found = [_standing_state(leg, lot)[0] for leg in legs]
+def _route_state(legs: Sequence[Passed], lot: Lot) -> StateWord:
+    found: list[StateWord] = [_standing_state(leg, lot)[0] for leg in legs]
     return next((state for state in found if state != "ranked"), "ranked")
 
 

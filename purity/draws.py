@@ -144,10 +144,10 @@ def sample(draws: Draws, given: Given) -> Array:
     if given.law == "exact" or not draws.blocks:
         return np.array([given.median])
     if given.law == "uniform":
-        return given.low + (given.high - given.low) * uniform(draws, given.key)
+        return np.asarray(given.low + (given.high - given.low) * uniform(draws, given.key))
     if given.law == "below":
-        return given.high * uniform(draws, given.key)
+        return np.asarray(given.high * uniform(draws, given.key))
     z = normal(draws, given.key)[0]
     if given.law == "normal":
-        return given.median + z * (given.high - given.low) / (2 * Z95)
+        return np.asarray(given.median + z * (given.high - given.low) / (2 * Z95))
     return np.asarray(given.median * np.exp(z * np.log(given.high / given.low) / (2 * Z95)))

@@ -245,7 +245,7 @@ def _part(
     for row, c in enumerate(rows):
         if c in contacts:
             ledger[contacts.index(c), 0] += done.ledger[row, f]
-    formed = ()
+    formed: tuple[str, ...] = ()
     if way.cap is not None and np.mean(done.total[f] > done.x[f]) >= 0.5:
         formed = (way.cap[0].name,)
     pickup = Pickup(

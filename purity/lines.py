@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from purity.constants import GAS_FORMERS, R
 from purity.contacts.ceilings import ceiling
 from purity.database import Found, outside
+from purity.followers import total
 from purity.kinetics.advance import HELD_BACK_BY
-from purity.passing import Passed, total
+from purity.passing import Passed
 from purity.result import Band, Block, ContactLine, Line
 from purity.risk import margin, spent, word
 from purity.scenario import Lot

@@ -13,11 +13,12 @@ from purity.contacts.gas import host_evaporation
 from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
+from purity.followers import Part, total
 from purity.kinetics.advance import HELD_BACK_BY, State
 from purity.kinetics.arrhenius import curve_integral
 from purity.kinetics.exposure import Curve
 from purity.kinetics.schedule import Schedule, segments
-from purity.moving import Part, move, total
+from purity.moving import move
 from purity.scenario import Choice, Lot
 
 Array = NDArray[np.float64]

@@ -35,6 +35,8 @@ SCENARIO_FILE = NUMBERS | {"scenario", "database", "quantities", "scenario_lines
 #: room -> rooms of ours it may import. A name with ".*" stands for every room inside.
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
+    "kinetics": set(),
+    "driving_force": set(),
     "constants": set(),
     "units": NUMBERS,
     "quantities": NUMBERS | {"scenario", "units"},
@@ -50,14 +52,14 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.arrhenius": NUMBERS | {"kinetics.exposure"},
     "kinetics.schedule": NUMBERS | {"kinetics.exposure", "kinetics.arrhenius"},
     "kinetics.transfer": NUMBERS,
+    "kinetics.groups": NUMBERS | {"kinetics.exposure"},
+    "kinetics.following": NUMBERS | {"kinetics.exposure", "kinetics.schedule"},
     "kinetics.particles": NUMBERS,
     "kinetics.casting": NUMBERS,
     "kinetics.laplace": NUMBERS,
     "kinetics.modes": NUMBERS | {"kinetics.laplace"},
     "kinetics.march": NUMBERS | {"kinetics.modes"},
-    "kinetics.pieces": NUMBERS
-    | KINETICS_BASE
-    | {"kinetics.laplace", "kinetics.modes", "kinetics.stage"},
+    "kinetics.pieces": NUMBERS | KINETICS_BASE | {"kinetics.laplace", "kinetics.modes", "kinetics.stage"},
     "kinetics.surface": NUMBERS
     | KINETICS_BASE
     | {"kinetics.stage", "kinetics.flux_newton", "kinetics.pieces"},
@@ -69,9 +71,7 @@ ALLOWED: dict[str, set[str]] = {
     "kinetics.arrow": NUMBERS | KINETICS_BASE | {"kinetics.stage", "kinetics.flux_newton"},
     "kinetics.passive": NUMBERS | KINETICS_BASE | {"kinetics.stage"},
     "kinetics.sdirk": NUMBERS | KINETICS_BASE | BATH,
-    "kinetics.control": NUMBERS
-    | KINETICS_BASE
-    | {"kinetics.modes", "kinetics.pieces", "kinetics.passage"},
+    "kinetics.control": NUMBERS | KINETICS_BASE | {"kinetics.modes", "kinetics.pieces", "kinetics.passage"},
     "kinetics.bath": NUMBERS | KINETICS_BASE | BATH | {"kinetics.sdirk", "scenario"},
     "kinetics.refine": NUMBERS | KINETICS_BASE | BATH | {"kinetics.bath"},
     "kinetics.elasticity": NUMBERS | KINETICS_BASE | BATH | {"kinetics.bath"},
@@ -84,8 +84,7 @@ ALLOWED: dict[str, set[str]] = {
     "driving_force.components": NUMBERS,
     "driving_force.interior": NUMBERS | {"driving_force.components"},
     "driving_force.pivots": NUMBERS | {"driving_force.components"},
-    "driving_force.newton": NUMBERS
-    | {f"driving_force.{n}" for n in ("components", "interior", "pivots")},
+    "driving_force.newton": NUMBERS | {f"driving_force.{n}" for n in ("components", "interior", "pivots")},
     "driving_force.problem": NUMBERS | {"driving_force.components"},
     "driving_force.equilibrium": NUMBERS | EQUILIBRIUM,
     "driving_force.sensitivity": NUMBERS | EQUILIBRIUM | {"driving_force.equilibrium"},
@@ -106,9 +105,14 @@ ALLOWED: dict[str, set[str]] = {
     "contacts": BELOW_CONTACTS | DRIVING_FORCE | CONTACTS | {"kinetics.exposure"},
     "result": {"errors"},
     "uncertainty": {"result"},
-    "risk": {"result"},
+    "risk": {"result", "uncertainty"},
     "cautions": {"scenario", "database"},
-    "assess": BELOW_ASSESS,
+    "followers": BELOW_ASSESS,
+    "moving": BELOW_ASSESS | {"followers"},
+    "passing": BELOW_ASSESS | {"followers", "moving"},
+    "lines": BELOW_ASSESS | {"followers", "passing"},
+    # the package itself, for its version
+    "assess": BELOW_ASSESS | {"", "followers", "passing", "lines"},
     "routes": BELOW_ASSESS | {"assess"},
     "window": BELOW_ASSESS | {"assess"},
     "levers": BELOW_ASSESS | {"assess"},

@@ -135,11 +135,12 @@ def follower_skin(
     near = [f for f, cap in caps.items() if cap < min(reach, min(caps.values()) + REACH / 2)]
     if not near:
         return None
-    curves, records = [], []
+    curves: list[Array] = []
+    records: list[Found] = []
     for formula in near:
         own, found = skin(setting, formula)
-        others = np.where(np.arange(len(own.nu)) == element, 0.0, own.nu)
-        curves.append((own.ln_k.ln - others @ np.log(np.maximum(x, 1e-30))) / own.nu[element])
+        rest_nu = np.where(np.arange(len(own.nu)) == element, 0.0, own.nu)
+        curves.append((own.ln_k.ln - rest_nu @ np.log(np.maximum(x, 1e-30))) / own.nu[element])
         records.extend(found)
     lowest = np.min(np.stack(np.broadcast_arrays(*curves)), axis=0)
     if np.all(lowest > np.log(np.maximum(x[element], 1e-30))):

@@ -1,0 +1,1 @@
+"""The thermodynamic centre: how far contents could go; it knows no time."""

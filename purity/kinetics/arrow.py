@@ -238,7 +238,7 @@ def solve(tie: Plan, equations: System, warm: Point, tolerance: float) -> tuple[
                 answer.y[np.ix_(tie.hub, draws[good])] = z[:, good]
                 answer.flux[:, draws[good]] = flux[:, good]
                 solved[draws[good]] = True
-                left = ~done
+                left = np.asarray(~done)
                 if not left.any():
                     break
                 z, part, draws = z[:, left], part.take(left), draws[left]

@@ -216,7 +216,7 @@ def width(exposure: Exposure) -> int:
     curves += [curve for film in exposure.films for curve in film.parameters]
     arrays = [exposure.area, *(c.activity for c in carriers if not isinstance(c.activity, Curve))]
     arrays += [c.inventory for c in carriers if c.inventory is not None]
-    return max([curve.ln.shape[-1] for curve in curves] + [np.atleast_1d(a).shape[-1] for a in arrays])
+    return int(max([curve.ln.shape[-1] for curve in curves] + [np.atleast_1d(a).shape[-1] for a in arrays]))
 
 
 def select(exposure: Exposure, draws: NDArray[np.int64]) -> Exposure:

@@ -133,7 +133,7 @@ def heavy(
     rate = np.exp(exposure.exchange.ln[element].max(axis=0)) * exposure.area * rho_per_mol * time
     gained = np.exp(top) * np.minimum(1.0, rate)
     moved = [carrier.nu[j] / carrier.nu[element] * gained > LIGHT * x[j] for j in others]
-    return np.any(np.stack(np.broadcast_arrays(*moved)), axis=0)
+    return np.asarray(np.any(np.stack(np.broadcast_arrays(*moved)), axis=0))
 
 
 def follow(carrier: Carrier, element: int, x: Array, least: Array) -> Carrier:

@@ -62,7 +62,13 @@ def test_twice_the_thickness_halves_the_water_let_in_while_the_desiccant_lasts()
     st.floats(0.0, 1000.0),
 )
 def test_pressure_stays_between_the_floor_and_the_room(
-    conductance: float, outside: float, filled: float, volume: float, time: float, capacity: float, floor: float
+    conductance: float,
+    outside: float,
+    filled: float,
+    volume: float,
+    time: float,
+    capacity: float,
+    floor: float,
 ) -> None:
     made = inside(conductance, outside, filled, volume, time, capacity, floor)
     low = min(outside, filled, floor if capacity > 0 else filled)
