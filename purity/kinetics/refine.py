@@ -13,8 +13,8 @@ from purity.kinetics.stage import Index, is_linear
 
 #: Relative error above which a draw is done again with twice as many steps.
 WANTED = 0.02
-#: A large lot is judged by every so many of its draws, if that leaves enough of them; where these are
-#: not good enough, all are checked.
+#: A large bath is judged by every so many of its draws, if that leaves enough of them; where these are
+#: not good enough, or end elsewhere in a bath that can have two answers, all are checked.
 EVERY, ENOUGH = 4, 256
 #: Change on doubling the steps over the error that is left, for a method of second order.
 ORDER = 3.0
@@ -55,13 +55,14 @@ def refined(case: Case, *, nodes: int = 32, history: bool = False) -> Refined:
     path = integrate(case, nodes=nodes, history=history)
     if _exact(case):
         return Refined(path, 0.0, ~path.solved)
-    few_steps = max(nodes // 2, 4)
+    few_steps = max(nodes // 2, 2)
     some = np.arange(0, case.total.shape[-1], EVERY)
     if len(some) >= ENOUGH:
         part = case.take(some)
         seen = _error(part, integrate(part, nodes=few_steps), _take(path, some))
         error = float(np.quantile(seen, 0.95, axis=-1).max(initial=0.0))
-        if error < WANTED:
+        elsewhere = path.two_roots and bool((seen > OTHER).any())
+        if error < WANTED and not elsewhere:
             return Refined(path, error, ~path.solved)
     wrong = _error(case, integrate(case, nodes=few_steps), path)
     again = np.flatnonzero((wrong > WANTED).any(axis=0))

@@ -551,3 +551,26 @@ def test_a_fast_loss_at_the_start_is_followed() -> None:
     rough = integrate(bath, nodes=16).x
     assert rough[1] - rough[0] == pytest.approx(start[1] - start[0], rel=1e-9)
     assert rough[1] == pytest.approx(best[1], rel=2e-3)
+
+
+def test_a_large_bath_is_judged_by_some_of_its_draws() -> None:
+    bath = spread(1024)
+    part = refined(bath, nodes=16)
+    every = refined(bath.take(np.arange(0, 1024, 4)), nodes=16)
+    assert part.error == pytest.approx(every.error, rel=1e-6)
+    assert np.array_equal(part.path.x, integrate(bath, nodes=16).x)
+
+
+def test_draws_that_are_not_good_enough_are_done_again() -> None:
+    """Oxygen carried in by water and out by carbon, faster in some draws than four steps can follow."""
+    bath = spread(40)
+    quick = np.linspace(2.0, 5.0, 40)
+    faster = tuple(scale(e, quick, {"gas film": quick}, np.zeros(1)) for e in bath.exposures)
+    bath = replace(bath, exposures=faster)
+    rough, best = integrate(bath, nodes=4).x, integrate(bath, nodes=256).x
+    done = refined(bath, nodes=4)
+    redone = np.abs(done.path.x - rough).max(axis=0) > 0
+    assert 0 < redone.mean() < 1
+    error, before = (np.abs(x[:, redone] / best[:, redone] - 1).max() for x in (done.path.x, rough))
+    assert error < before / 2
+    assert np.array_equal(done.path.x[:, ~redone], rough[:, ~redone])
