@@ -320,11 +320,7 @@ def _assumed(
 def _facts(scenario: Scenario, walked: Iterable[Passed]) -> ScenarioFacts:
     lot = scenario.lot
     assumed = {
-        given.key
-        for one in walked
-        for exposed in one.exposed
-        for given in exposed.inputs
-        if given.assumed
+        given.key for one in walked for exposed in one.exposed for given in exposed.inputs if given.assumed
     }
     limits = {element: 1e6 * limit for element, limit in lot.limits.items()}
     if lot.metals_limit is not None:

@@ -26,8 +26,10 @@ from purity.kinetics.schedule import Schedule
 Array = NDArray[np.float64]
 Index = NDArray[np.int64]
 
-#: Share of a content below which what a gas could bring or carry off is left out.
+#: Share of what another gas moves of an element below which a gas is left out.
 IDLE = 1e-2
+#: Share of a content below which a single element is taken not to cross.
+STILL = 1e-6
 #: Share of the draws in which a compound may act back on the leaders and still follow.
 RARE = 0.05
 #: ln of saturation beyond which a compound is taken to form.
@@ -96,11 +98,32 @@ def _move_solid(
     whole: tuple[Exposure, ...], entered: State, setting: Setting, schedule: Schedule, history: bool
 ) -> list[Part]:
     """Move a solid: compounds with its host cap its surface; stored metal only grows films."""
-    stored = any(e.films for e in whole)
-    plan = Plan(whole, {} if stored else products.host_compounds(setting))
-    bare = [replace(e, carriers=()) if e.films else e for e in whole]
-    groups = tied([*bare, *(e for e in whole if e.films)] if stored else bare, (), len(setting.impurities))
+    if any(e.films for e in whole):
+        plan = Plan(whole, {})
+    else:
+        moving = _without_still(
+            _without_idle(whole, entered, setting, schedule, {}), entered, setting, schedule
+        )
+        plan = Plan(moving, products.host_compounds(setting))
+    groups = tied(plan.exposures, (), len(setting.impurities))
     return [_advance(entered, setting, schedule, plan, index, history) for index in groups]
+
+
+def _without_still(
+    whole: tuple[Exposure, ...], entered: State, setting: Setting, schedule: Schedule
+) -> tuple[Exposure, ...]:
+    """Leave out single elements that a gas could not move by more than STILL: metals far from boiling."""
+    hot = np.broadcast_to(schedule.T.max(axis=0), (setting.draws.n,))
+    held = np.maximum(total(entered), 1e-12)
+    kept = []
+    for e in whole:
+        moved = {
+            c.name: turnover(c, e.area, setting.amount, held, held, setting.duration, hot).max()
+            for c in e.carriers
+            if np.count_nonzero(c.nu) == 1
+        }
+        kept.append(replace(e, carriers=tuple(c for c in e.carriers if moved.get(c.name, np.inf) > STILL)))
+    return tuple(kept)
 
 
 def _leaders(plan: Plan, count: int) -> tuple[Plan, list[Index], dict[int, list[tuple[int, Carrier]]]]:

@@ -6,6 +6,7 @@ from purity.contacts.brought import charge, dust, residue
 from purity.contacts.gas import gas
 from purity.contacts.package import package
 from purity.contacts.setting import Expose, Exposed, Setting
+from purity.contacts.solid import support
 from purity.contacts.storage import store
 from purity.contacts.wall import wall
 from purity.database import Gap
@@ -35,8 +36,11 @@ def expose(contact: Contact, setting: Setting) -> Exposed:
     Exposed
         With the records behind it and the gaps in it.
     """
-    stored = setting.choice.process == "store" and isinstance(contact.body, Atmosphere)
-    return (store if stored else BY_BODY[type(contact.body)])(contact, setting)
+    if setting.choice.process == "store" and isinstance(contact.body, Atmosphere):
+        return store(contact, setting)
+    if isinstance(contact.body, Material) and not setting.liquid:
+        return support(contact, setting)
+    return BY_BODY[type(contact.body)](contact, setting)
 
 
 __all__ = ["BY_BODY", "Exposed", "Gap", "Setting", "expose"]

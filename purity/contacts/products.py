@@ -39,7 +39,7 @@ def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]
     first: dict[int, tuple[float, str]] = {}
     for formula in _compounds(setting.library):
         nu = stoichiometry(setting, formula)
-        if nu is None or np.count_nonzero(nu) != 1 or set(atoms(formula)) == {setting.host}:
+        if nu is None or np.count_nonzero(nu) != 1 or setting.host not in atoms(formula):
             continue
         energy = dissolution(setting, formula, "solid", Draws.nominal())
         if isinstance(energy, Gap):

@@ -197,9 +197,16 @@ def turnover(
 
 
 def idle(shares: Mapping[str, Array], least: float) -> set[str]:
-    """Return the gases that move less than a share of every content, or of what another gas moves of it."""
+    """Return the gases that move less of every element than a share of what another gas moves of it.
+
+    Parameters
+    ----------
+    shares : mapping of gas to (I,) array
+        From :func:`turnover`; what turns over less than 1e-6 of a content counts as idle in any case.
+    least : float
+    """
     most = np.max(np.stack(list(shares.values())), axis=0) if shares else np.zeros(0)
-    return {name for name, share in shares.items() if np.all(share < least * np.maximum(most, 1.0))}
+    return {name for name, share in shares.items() if np.all(share < least * np.maximum(most, 1e-6 / least))}
 
 
 def spare(carrier: Carrier, amount: Array, held: Array) -> bool:
