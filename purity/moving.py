@@ -28,6 +28,8 @@ Index = NDArray[np.int64]
 
 #: Share of what another gas moves of an element below which a gas is left out.
 IDLE = 1e-2
+#: Share of a content of a melt below which a gas is left out in any case: it does not show in a band.
+FLOOR = 1e-2
 #: Share of a content below which a single element is taken not to cross.
 STILL = 1e-6
 #: Share of the draws in which a compound may act back on the leaders and still follow.
@@ -251,7 +253,7 @@ def _idle_gases(
         moved = {
             c.name: turnover(c, e.area, setting.amount, dissolved, held, setting.duration, hot) for c in gases
         }
-        found |= idle(moved, IDLE) & {c.name for c in gases if ties(c)}
+        found |= idle(moved, IDLE, FLOOR if setting.liquid else STILL) & {c.name for c in gases if ties(c)}
     return found
 
 

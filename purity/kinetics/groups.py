@@ -196,17 +196,20 @@ def turnover(
     return np.asarray(np.median(share, axis=-1))
 
 
-def idle(shares: Mapping[str, Array], least: float) -> set[str]:
+def idle(shares: Mapping[str, Array], least: float, floor: float) -> set[str]:
     """Return the gases that move less of every element than a share of what another gas moves of it.
 
     Parameters
     ----------
     shares : mapping of gas to (I,) array
-        From :func:`turnover`; what turns over less than 1e-6 of a content counts as idle in any case.
+        From :func:`turnover`.
     least : float
+        Share of what the busiest gas moves.
+    floor : float
+        Share of a content that counts as idle in any case.
     """
     most = np.max(np.stack(list(shares.values())), axis=0) if shares else np.zeros(0)
-    return {name for name, share in shares.items() if np.all(share < least * np.maximum(most, 1e-6 / least))}
+    return {name for name, share in shares.items() if np.all(share < np.maximum(least * most, floor))}
 
 
 def spare(carrier: Carrier, amount: Array, held: Array) -> bool:
