@@ -277,7 +277,7 @@ def _choice_result(
         host_loss_percent=loss,
         attack_um=None,
         warnings=(*passed.notes, *_numerical(passed), *for_choice(passed.choice, lot, library)),
-        species=(),
+        species=tuple(dict.fromkeys(s for one in passed.parcels.values() for s in one.species)),
         measure=measure,
     )
 

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from purity.constants import GAS_FORMERS, R
 from purity.contacts.ceilings import ceiling
+from purity.contacts.setting import Exposed
 from purity.database import Found, outside
 from purity.followers import total
 from purity.kinetics.advance import HELD_BACK_BY
@@ -126,7 +127,7 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
             name: float(s) for name, s in zip(HELD_BACK_BY, passed.shares[:, i], strict=True) if abs(s) > 1e-3
         },
         contacts=_contact_lines(passed, i, column, scale, ceilings),
-        forms=passed.formed.get(element, ()),
+        forms=_forms(passed, element),
         records=tuple(sorted(found.record.quantity for found in records)),
         quality=max((found.record.quality for found in records), default=None),
         extrapolated=any(_extrapolated(found, passed) for found in records),
@@ -141,14 +142,36 @@ def block(element: str) -> Block:
     return "gas formers" if element in GAS_FORMERS else "metals"
 
 
+def _forms(passed: Passed, element: str) -> tuple[str, ...]:
+    """Compounds that hold the element in the melt, and those that stand at a wall at rest."""
+    at_walls = [f for one in passed.parcels.values() if element in one.ln_ceiling for f in one.forms]
+    return tuple(dict.fromkeys((*passed.formed.get(element, ()), *at_walls)))
+
+
 def _gap(passed: Passed, element: str) -> str | None:
     found = passed.gaps.get(element, ())
     return f"no data: {found[0].quantity} ({found[0].reason})" if found else None
 
 
 def _ceilings(passed: Passed, i: int) -> list[Array | None]:
-    x = total(passed.after)
-    return [ceiling(one, passed.setting, x, passed.hot, i) for one in passed.exposed]
+    """Ln of the ceiling against each contact; of a wall the certified one, where it has an answer.
+
+    Traces and inventories of the same contact may hold more; the higher of the two stands.
+    """
+    x, element = total(passed.after), passed.impurities[i]
+    found: list[Array | None] = []
+    for c, one in enumerate(passed.exposed):
+        own = ceiling(one, passed.setting, x, passed.hot, i)
+        rest = passed.parcels[c].ln_ceiling.get(element) if c in passed.parcels else None
+        certified = rest is not None and len(rest) > 0 and not _traced(one, i)
+        found.append(rest if certified and own is not None else own)
+    return found
+
+
+def _traced(one: Exposed, i: int) -> bool:
+    return any(
+        c.nu[i] > 0 and c.inventory is not None and np.any(c.inventory > 0) for c in one.exposure.carriers
+    )
 
 
 def _deciding_ceiling(passed: Passed, i: int, ceilings: Sequence[Array | None]) -> Array | None:
@@ -161,7 +184,8 @@ def _deciding_ceiling(passed: Passed, i: int, ceilings: Sequence[Array | None]) 
 def _driving_force(passed: Passed, i: int, ln_ceiling: Array) -> float:
     """Median of R T (ln ceiling - ln start), J per mole of impurity."""
     ln_start = np.log(np.maximum(total(passed.before)[i], 1e-30))
-    return float(np.median(R * passed.hot * (ln_ceiling - ln_start)))
+    T = float(np.median(passed.hot))
+    return R * T * float(np.median(ln_ceiling) - np.median(ln_start))
 
 
 def _held_back_by(passed: Passed, i: int) -> str | None:

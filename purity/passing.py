@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from purity.contacts import expose
 from purity.contacts.gas import host_evaporation
+from purity.contacts.parcel import Parcel, parcel
 from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
@@ -19,7 +20,7 @@ from purity.kinetics.arrhenius import curve_integral
 from purity.kinetics.exposure import Curve
 from purity.kinetics.schedule import Schedule, segments
 from purity.moving import move
-from purity.scenario import Choice, Lot
+from purity.scenario import Choice, Lot, Material
 
 Array = NDArray[np.float64]
 
@@ -54,6 +55,8 @@ class Passed:
         Highest temperature, K.
     series : mapping of element to (times (K,), contents (K, N))
     notes : tuple of str
+    parcels : mapping of contact to Parcel
+        Where the walls of a melt lead.
     """
 
     choice: Choice
@@ -75,6 +78,7 @@ class Passed:
     hot: Array
     series: Mapping[str, tuple[Array, Array]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
+    parcels: Mapping[int, Parcel] = field(default_factory=dict)
 
 
 def make_setting(
@@ -246,7 +250,21 @@ def _gather(
         np.broadcast_to(schedule.T.max(axis=0), (n,)),
         series,
         tuple(dict.fromkeys(note for one in exposed for note in one.notes)),
+        _parcels(setting, after, np.broadcast_to(schedule.T.max(axis=0), (n,))),
     )
+
+
+def _parcels(setting: Setting, after: State, hot: Array) -> dict[int, Parcel]:
+    """Where each wall of a melt leads, at the hottest point and the contents of the end."""
+    if not setting.liquid:
+        return {}
+    found = {}
+    for c, contact in enumerate(setting.choice.contacts):
+        if isinstance(contact.body, Material):
+            one = parcel(contact.body, setting, after.x, hot)
+            if one is not None:
+                found[c] = one
+    return found
 
 
 def _host_loss(

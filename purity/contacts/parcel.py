@@ -23,6 +23,8 @@ Array = NDArray[np.float64]
 
 #: mol of each wall compound for each mol of host: so much that it is never used up.
 EXCESS = 10.0
+#: Only every so many of the draws of a large run are asked: a printed band needs no more.
+EVERY, ENOUGH = 4, 512
 #: Least content of an element in the parcel, mol per mol of host.
 LEAST = 1e-25
 
@@ -33,12 +35,12 @@ class Parcel:
 
     Parameters
     ----------
-    ln_ceiling : mapping of element to (N,) array
-        ln of the content at rest; minus infinity in draws without an answer.
+    ln_ceiling : mapping of element to (M,) array
+        ln of the content at rest, in the draws that were asked and have an answer.
     forms : tuple of str
         Compounds present at rest in at least half of the draws that the wall is not made of.
-    solved : (N,) bool array
-        Draws with an answer inside the dilute range.
+    solved : float
+        Share of the draws asked with an answer inside the dilute range.
     gap : float
         Largest duality gap of those, RT per mole of atoms.
     species : tuple of str
@@ -47,7 +49,7 @@ class Parcel:
 
     ln_ceiling: Mapping[str, Array]
     forms: tuple[str, ...]
-    solved: NDArray[np.bool_]
+    solved: float
     gap: float
     species: tuple[str, ...]
 
@@ -81,18 +83,18 @@ def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel |
     system = chosen.system
     inputs = [{setting.host: 1.0}, *(atoms(f) for f in solids), *({e: 1.0} for e in elements)]
     formula = np.array([[round(i.get(e, 0.0)) for e in system.elements] for i in inputs], dtype=np.int64)
+    g = gibbs(chosen, setting.library, T, setting.draws)
+    step = EVERY if x.shape[-1] >= EVERY * ENOUGH else 1
+    g, x = np.broadcast_to(g, (len(g), x.shape[-1]))[:, ::step], x[:, ::step]
     n = x.shape[-1]
     own = [np.maximum(x[setting.impurities.index(e)], LEAST) for e in elements]
     amounts = np.stack([np.ones(n), *(np.full(n, EXCESS) for _ in solids), *own])
     try:
-        rest = equilibrium(system, gibbs(chosen, setting.library, T, setting.draws), amounts, inputs=formula)
+        rest = equilibrium(system, g, amounts, inputs=formula)
     except IllPosedError:
         return None
     solved = rest.state == Outcome.SOLVED
-    ceilings = {
-        e: np.where(solved, rest.ln_activity[system.species.index(f"{e} in {setting.host}")], -np.inf)
-        for e in elements
-    }
+    ceilings = {e: rest.ln_activity[system.species.index(f"{e} in {setting.host}")][solved] for e in elements}
     share = rest.present[:, solved].mean(axis=-1) if solved.any() else np.zeros(len(system.phases))
     forms = tuple(
         name
@@ -100,4 +102,6 @@ def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel |
         if name != "metal" and often >= 0.5 and name not in solids
     )
     gap = float(rest.gap[solved].max()) if solved.any() else 0.0
-    return Parcel(ceilings, forms, solved, gap, tuple(f"{s.name}: {s.why}" for s in chosen.species))
+    return Parcel(
+        ceilings, forms, float(solved.mean()), gap, tuple(f"{s.name}: {s.why}" for s in chosen.species)
+    )
