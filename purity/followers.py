@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from purity.constants import DILUTE
 from purity.contacts import products
 from purity.contacts.setting import Setting
 from purity.database import Found
@@ -208,7 +209,7 @@ def _channel(
             stores.append(np.inf if k.inventory is None else k.inventory / setting.amount)
             if k.conductance is not None:
                 slopes.append(_on(k.conductance, T) - _on(k.ln_k, T))
-        ceiling[f] = np.max(np.stack(np.broadcast_arrays(*tops)), axis=0)
+        ceiling[f] = np.minimum(np.max(np.stack(np.broadcast_arrays(*tops)), axis=0), np.log(DILUTE))
         inventory[f] = np.sum(np.stack(np.broadcast_arrays(*stores)), axis=0)
         if slopes:
             side[f] = np.logaddexp.reduce(np.stack(np.broadcast_arrays(*slopes)), axis=0) + per_mol

@@ -165,21 +165,38 @@ def _left(channels: Sequence[Channel], ledger: Array) -> Array:
 
 
 def _step(total: Array, rates: _Rates, dt: Array, left: Array) -> Array:
-    """Gain through each channel in a step, (C, F, N)."""
+    """Gain through each channel in a step, (C, F, N).
+
+    A channel that would give more than it has left gives just that, spread over the step.
+    """
     dt = np.asarray(dt)
-    whole = rates.kappa.sum(axis=0)
-    rest = (rates.kappa * rates.ceiling).sum(axis=0) / np.maximum(whole, 1e-300)
-    fall = -np.expm1(-whole * dt)
-    mean = np.where(whole * dt > 1e-12, fall / np.maximum(whole, 1e-300), dt)
-    free = rates.kappa * ((rates.ceiling - rest) * dt - (total - rest) * mean)
-    capped = rates.kappa * (rates.ceiling - rates.cap) * dt
+    open_ended = np.ones_like(left, dtype=bool)
+    gained = _free(total, rates, dt, open_ended, left)
+    spent = gained > left
+    if spent.any():
+        open_ended = ~spent
+        gained = _free(total, rates, dt, open_ended, left)
     over = total > rates.cap
-    gained = np.where(over, capped, free)
+    if not over.any():
+        return np.minimum(gained, left)
+    capped = np.where(open_ended, rates.kappa * (rates.ceiling - rates.cap) * dt, left)
     # above the cap less leaves than if all were dissolved, so no content falls below the free course
-    least = free.sum(axis=0)
-    short = over & (gained.sum(axis=0) < least)
-    gained = np.where(short, free, gained)
-    return np.minimum(gained, left)
+    short = capped.sum(axis=0) < gained.sum(axis=0)
+    return np.minimum(np.where(over & ~short, capped, gained), left)
+
+
+def _free(total: Array, rates: _Rates, dt: Array, open_ended: NDArray[np.bool_], left: Array) -> Array:
+    """Gain of a content that is all dissolved; channels that are not open-ended give what they have left."""
+    kappa = np.where(open_ended, rates.kappa, 0.0)
+    supply = np.where(open_ended, 0.0, left / np.maximum(dt, 1e-300)).sum(axis=0)
+    whole = kappa.sum(axis=0)
+    source = (kappa * rates.ceiling).sum(axis=0) + supply
+    rest = source / np.maximum(whole, 1e-300)
+    still = whole * dt < 1e-9
+    fall = -np.expm1(-whole * dt) / np.maximum(whole, 1e-300)
+    # integral of the content over the step; linear where nothing pulls it back
+    content = np.where(still, total * dt + 0.5 * source * dt**2, rest * dt + (total - rest) * fall)
+    return np.where(open_ended, kappa * (rates.ceiling * dt - content), left)
 
 
 def shares(followed: Followed) -> tuple[Array, Array, Array, Array]:
