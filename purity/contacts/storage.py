@@ -87,7 +87,8 @@ def stored(
     if not films:
         gap = Gap(f"films:{setting.host}/oxide/{environment}", "no film record for this metal in this gas")
         gaps["O"] = (gap,)
-    feeding = [gas for gas in supply if gas != "H2O" or any(water_feeds(setting, f[1].record) for f in films)]
+    wet = any(water_feeds(setting, found.record) for film, found in films if _oxide(film))
+    feeding = [gas for gas in supply if gas != "H2O" or wet]
     carriers = tuple(carrier_of(setting, gas, supply[gas]) for gas in feeding)
     gain, water = _adsorbed(setting, area, humidity, supply.get("H2O"))
     by_element: dict[str, tuple[Found, ...]] = {}
