@@ -230,7 +230,7 @@ def _series(passed: Passed, element: str, scale: float) -> tuple[tuple[float, Ba
 
 def from_nothing(column: Column) -> Column:
     """Return an uncertified element as the least it can hold: what it gains, from a start of zero."""
-    return replace(column, start=np.zeros_like(column.start), end=column.end - column.start)
+    return replace(column, start=np.zeros_like(column.start), end=np.maximum(column.end - column.start, 0.0))
 
 
 def group_columns(found: Mapping[str, Column], lot: Lot) -> list[Column]:

@@ -33,6 +33,9 @@ def notes(
     """
     if methods:
         yield from _methods(choice)
+    below = [line for line in shown if line.end and line.detection and line.end.high < line.detection]
+    if methods and below:
+        yield "in brackets: predicted, for it lies below the detection limit (DL)"
     worst = [f"{line.impurity} {words.content(line.worst)}" for line in shown if line.worst is not None]
     if worst:
         yield f"worst position in the piece: {', '.join(worst)}"

@@ -234,10 +234,7 @@ def _blocks(lines: Sequence[Line], width: int) -> Iterator[Table]:
     """Metals, then gas formers, in columns of one width."""
     cells = {line.impurity: _cells(line, wide=width >= WIDE) for line in lines}
     name_width = max(7, *(min(14, len(name)) for name in cells), 0)
-    widths = [
-        max(len(part) for row in (FIGURES, *cells.values()) for part in row[column].split("\n"))
-        for column in range(len(FIGURES))
-    ]
+    widths = [max(len(row[column]) for row in (FIGURES, *cells.values())) for column in range(len(FIGURES))]
     for block in BLOCKS:
         inside = worst_first(line for line in lines if line.block == block)
         if not inside:

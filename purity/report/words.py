@@ -29,7 +29,8 @@ _PPB = 0.995 * PPB_BELOW
 #: Colour that repeats a word, where colour is wanted.
 COLOURS: dict[str, str] = {"over": "red", "closed": "red", "tight": "yellow"}
 BAR_CELLS = 6
-LINE = "\n"
+#: Share of a limit below which a pickup is said to be none that shows.
+HARDLY = 2e-3
 
 
 def figures(value: float, digits: int = 2) -> str:
@@ -109,6 +110,8 @@ def limits_it(line: Line) -> str:
     """Return what holds the pickup of an impurity, with the contact that does most of it."""
     if line.held_back_by is None:
         return (line.gap or "") if line.pickup is None else ""
+    if line.limit and line.pickup and max(abs(line.pickup.low), abs(line.pickup.high)) < HARDLY * line.limit:
+        return "hardly moves"
     main = max(line.contacts, key=lambda part: abs(part.pickup.median), default=None)
     words = HELD_BACK_BY.get(line.held_back_by, f"{{contact}}: {line.held_back_by}")
     return words.format(contact=main.contact if main else "all contacts")
@@ -126,13 +129,14 @@ def start(line: Line, *, method: bool) -> str:
 def ends(line: Line, *, wide: bool) -> tuple[str, str]:
     """Return upper 95 % and median content after the step, as the laboratory would report them.
 
-    Below detection they read together as "< DL (3.0 ppb predicted)"; of an element that the certificate
+    Below detection they read together as "< DL (3.0 ppb predicted)", in a narrow table as "< DL (3.0 ppb)"
+    with the word below it; of an element that the certificate
     does not name they are the pickup alone, with its sign.
     """
     if line.end is None:
         return _pickup(line.pickup)
     if line.detection is not None and line.end.high < line.detection:
-        return "< DL", f"({content(line.end.median)}{' ' if wide else LINE}predicted)"
+        return "< DL", f"({content(line.end.median)}{' predicted' if wide else ''})"
     return content(line.end.high), content(line.end.median)
 
 
