@@ -74,6 +74,7 @@ def assess(
         molar_mass=molar_mass,
         library=library,
         draws=draws,
+        exclude=scenario.exclude,
         history=history,
     )
     start = initial(scenario.lot, impurities, molar_mass, library, draws)

@@ -88,6 +88,7 @@ def make_setting(
     molar_mass: Mapping[str, float],
     library: Library,
     draws: Draws,
+    exclude: tuple[str, ...] = (),
 ) -> tuple[Setting, Schedule]:
     """Return what the contacts of a choice share, and its temperature over time."""
     time = np.stack(np.broadcast_arrays(*(sample(draws, t) for t, _ in choice.profile)))
@@ -121,6 +122,7 @@ def make_setting(
         time[-1] - time[0],
         mass / molar_mass[lot.host],
         density / molar_mass[lot.host],
+        exclude,
     )
     return setting, schedule
 
@@ -134,6 +136,7 @@ def pass_step(
     library: Library,
     draws: Draws,
     *,
+    exclude: tuple[str, ...] = (),
     history: bool = False,
 ) -> Passed:
     """Move a lot through one choice.
@@ -150,13 +153,15 @@ def pass_step(
         kg/mol of the host and the impurities.
     library : Library
     draws : Draws
+    exclude : tuple of str
+        Compounds that the user keeps from forming.
     history : bool
 
     Returns
     -------
     Passed
     """
-    setting, schedule = make_setting(lot, choice, impurities, molar_mass, library, draws)
+    setting, schedule = make_setting(lot, choice, impurities, molar_mass, library, draws, exclude)
     exposed = tuple(expose(contact, setting) for contact in choice.contacts)
     entered = _enter(state, setting, exposed)
     n = draws.n

@@ -76,7 +76,9 @@ def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel |
     elements = sorted({e for formula in solids for e in atoms(formula)} - {setting.host})
     if not solids or not set(elements) <= set(setting.impurities):
         return None
-    chosen = select(setting.library, setting.host, setting.phase, elements, solids, gas_phase=False)
+    chosen = select(
+        setting.library, setting.host, setting.phase, elements, solids, (), setting.exclude, gas_phase=False
+    )
     held = {s.formula for s in chosen.species if s.state in ("host", "dissolved")}
     if chosen.gaps and not set(elements) <= held:
         return None

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.contacts.setting import Setting, dissolution, stoichiometry
-from purity.database import Found, Gap, Library
+from purity.database import Found, Gap
 from purity.draws import Draws
 from purity.driving_force.pure import atoms
 from purity.kinetics.exposure import Curve, Skin, ln_at
@@ -24,7 +24,7 @@ def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
     if not setting.liquid:
         return {}
     seen: dict[str, tuple[Array, float]] = {}
-    for formula in _compounds(setting.library):
+    for formula in _compounds(setting):
         nu = stoichiometry(setting, formula)
         if nu is None or not nu.any():
             continue
@@ -37,7 +37,7 @@ def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
 def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]]:
     """Return, for each impurity of a solid, the compound with the host that saturates first."""
     first: dict[int, tuple[float, str]] = {}
-    for formula in _compounds(setting.library):
+    for formula in _compounds(setting):
         nu = stoichiometry(setting, formula)
         if nu is None or np.count_nonzero(nu) != 1 or setting.host not in atoms(formula):
             continue
@@ -50,9 +50,10 @@ def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]
     return {formula: skin(setting, formula) for _, formula in first.values()}
 
 
-def _compounds(library: Library) -> list[str]:
-    rows = library.tables.get("gibbs", ())
-    return sorted({record.words["formula"] for record in rows if record.words["state"] == "solid"})
+def _compounds(setting: Setting) -> list[str]:
+    rows = setting.library.tables.get("gibbs", ())
+    solids = {record.words["formula"] for record in rows if record.words["state"] == "solid"}
+    return sorted(solids - set(setting.exclude))
 
 
 def within_reach(seen: Mapping[str, tuple[Array, float]], x: Array, known: Collection[str]) -> list[str]:

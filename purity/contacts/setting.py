@@ -47,6 +47,8 @@ class Setting:
         mol of host.
     molar_density : (N,) array
         mol/m3.
+    exclude : tuple of str
+        Compounds that the user keeps from forming.
     """
 
     library: Library
@@ -60,6 +62,7 @@ class Setting:
     duration: Array
     amount: Array
     molar_density: Array
+    exclude: tuple[str, ...] = ()
 
     @property
     def host(self) -> str:
