@@ -175,7 +175,12 @@ TABLES: Mapping[str, Table] = {
     # exchange at walls and free surfaces by stirring: k = value (D / D_ref)^exponent
     "transfer": Table(("place", "stirring"), ("k_m_per_s", "D_ref_m2_per_s", "exponent"), spread="spread_ln"),
     # what a furnace's hot zone is made of: what it gives off (row set of atmospheres) and takes from the gas
-    "hot_zones": Table(("zone",), ("getter_share",), text=("outgassing",)),
+    "hot_zones": Table(
+        ("zone",),
+        ("getter_share", "T_from_K"),
+        spread="spread_ln",
+        text=("leaves_as", "vapours", "outgassing"),
+    ),
     "priors": Table(("kind",), ("low_ppm", "high_ppm")),
     "hazards": Table(
         ("rule",),

@@ -9,7 +9,7 @@ takes from a pumped vessel follows from that series and needs no rule of its own
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,7 +27,10 @@ from purity.contacts.setting import (
     stoichiometry,
     vapour_speed,
 )
-from purity.database import Found, Gap
+from purity.contacts.vessel import air_left, gettered, outgassing, swept, vapours, vessel_moles
+from purity.contacts.wrap import gaps as gaps_of_foil
+from purity.contacts.wrap import wrapped, wraps
+from purity.database import Found, Gap, Record
 from purity.driving_force.pure import atoms, gibbs_energy
 from purity.kinetics.exposure import Carrier, Curve, Exposure
 from purity.scenario import Atmosphere, Contact, Flowing, Furnace, Given, Pumped, Sealed
@@ -62,6 +65,8 @@ class Load:
     main : str
         Gas through which the others diffuse.
     flowing : bool
+    area : (N,) array
+        Surface of the metal that the gas meets, m2.
     """
 
     activity: Mapping[str, Array]
@@ -73,6 +78,7 @@ class Load:
     notes: tuple[str, ...]
     main: str = "Ar"
     flowing: bool = False
+    area: Array = field(default_factory=lambda: np.ones(1))
 
 
 def gas(contact: Contact, setting: Setting) -> Exposed:
@@ -91,7 +97,7 @@ def gas(contact: Contact, setting: Setting) -> Exposed:
     atmosphere = contact.body
     assert isinstance(atmosphere, Atmosphere)
     area = setting.sample(contact.area)
-    load = gas_load(atmosphere, setting, area)
+    load = replace(gas_load(atmosphere, setting, area), area=area)
     carriers: list[Carrier] = []
     records: dict[str, tuple[Found, ...]] = {}
     gaps: dict[str, tuple[Gap, ...]] = {}
@@ -118,7 +124,7 @@ def gas(contact: Contact, setting: Setting) -> Exposed:
         records[leaving.name] = behind
     rate, element_records = exchange(setting, "free surface")
     exposure = Exposure(contact.name, area, rate, tuple(carriers))
-    inputs = (contact.area, *load.inputs)
+    inputs = (contact.area, *load.inputs, *gaps_of_foil(setting).values())
     return Exposed(exposure, None, records, element_records, inputs, gaps, load.notes)
 
 
@@ -147,22 +153,39 @@ def gas_load(atmosphere: Atmosphere, setting: Setting, area: Array) -> Load:
         case Flowing(flow):
             return _flowing(setting, furnace, fractions, flow, pressure, area, inputs)
         case Sealed(volume):
-            mol = pressure * setting.sample(volume) / (R * T_ROOM)
-            return Load(
-                {name: x * pressure / P0 for name, x in fractions.items()},
-                None,
-                {name: x * mol for name, x in fractions.items()},
-                pressure,
-                (),
-                (*inputs, volume),
-                (),
-                _main(fractions),
-            )
+            return _sealed(setting, furnace, fractions, volume, pressure, inputs)
         case Pumped():
             return _pumped(setting, furnace, atmosphere, fractions, pressure, area, inputs)
         case _:
             activity = {name: x * pressure / P0 for name, x in fractions.items()}
             return Load(activity, None, {}, pressure, (), inputs, (), _main(fractions))
+
+
+def _sealed(
+    setting: Setting,
+    furnace: Furnace,
+    fractions: Mapping[str, Array],
+    volume: Given,
+    pressure: Array,
+    inputs: tuple[Given, ...],
+) -> Load:
+    """Return gas shut in with the metal: what was filled in, what purging left, after the hot zone."""
+    mol = pressure * setting.sample(volume) / (R * T_ROOM)
+    left, used, notes = air_left(setting, furnace, setting.choice.name)
+    rows = setting.library.rows("atmospheres", atmosphere=LEAK) if np.any(left > 0) else ()
+    air = {row.words["species"]: left * composition(setting, row) for row in rows}
+    held = {n: fractions.get(n, np.zeros(1)) + air.get(n, np.zeros(1)) for n in {*fractions, *air}}
+    held, zone = gettered(setting, furnace, held)
+    return Load(
+        {name: x * pressure / P0 for name, x in held.items()},
+        None,
+        {name: x * mol for name, x in held.items()},
+        pressure,
+        (*(Found(row) for row in rows), *zone),
+        (*inputs, volume, *used),
+        (*notes, *vapours(setting, furnace)),
+        _main(fractions),
+    )
 
 
 def _sources(
@@ -177,18 +200,20 @@ def _sources(
             continue
         inputs = (*inputs, rate)
         throughput = setting.sample(rate)
-        for record in setting.library.rows("atmospheres", atmosphere=made_of):
-            name = record.words["species"]
-            share = record.fields["fraction_ppm_mol"] * 1e-6 * spread_factor(setting, record)
+        rows = setting.library.rows("atmospheres", atmosphere=made_of)
+        shares = {row.words["species"]: composition(setting, row) for row in rows}
+        found: tuple[Found, ...] = ()
+        if made_of == LEAK:
+            shares, found = gettered(setting, furnace, shares)
+        for name, share in shares.items():
             entering[name] = entering.get(name, np.zeros(1)) + throughput * share
-            records = (*records, Found(record))
+        records = (*records, *(Found(row) for row in rows), *found)
     return entering, records, inputs
 
 
-def outgassing(setting: Setting, furnace: Furnace) -> str:
-    """Return the row set that says what the walls and the hot zone of a furnace give off."""
-    found = setting.library.find("hot_zones", zone=furnace.hot_zone or "none")
-    return found.record.words["outgassing"] if isinstance(found, Found) else "outgassing"
+def composition(setting: Setting, record: Record) -> Array:
+    """Return the mole fraction that a row of the table of atmospheres stands for, (N,)."""
+    return record.fields["fraction_ppm_mol"] * 1e-6 * spread_factor(setting, record)
 
 
 def _flowing(
@@ -204,31 +229,50 @@ def _flowing(
     entering, records, used = _sources(setting, furnace)
     extra = {name: rate / (R * T_ROOM) for name, rate in entering.items()}
     total = feed + sum(extra.values(), np.zeros(1))
-    names = {*fractions, *extra}
-    activity = {
-        name: (fractions.get(name, np.zeros(1)) * feed + extra.get(name, np.zeros(1))) / total * pressure / P0
-        for name in names
-    }
-    supply: Array | None = total * P0 / (pressure * area)
+    supply = total * P0 / (pressure * area)
     inputs = (*inputs, flow, *used)
-    notes: tuple[str, ...] = ()
+    main = _main(fractions)
+
+    def mixed(fed: Mapping[str, Array]) -> dict[str, Array]:
+        names = {*fed, *extra}
+        moles = {n: fed.get(n, np.zeros(1)) * feed + extra.get(n, np.zeros(1)) for n in names}
+        return {name: mol / total * pressure / P0 for name, mol in moles.items()}
+
     if furnace.exhaust:
         measured = {name: setting.sample(given) * pressure / P0 for name, given in furnace.exhaust.items()}
-        activity = {**activity, **measured}
-        return Load(
-            activity,
-            supply,
-            {},
-            pressure,
-            records,
-            (*inputs, *furnace.exhaust.values()),
-            notes,
-            _main(fractions),
-            True,
-        )
+        inputs = (*inputs, *furnace.exhaust.values())
+        return Load({**mixed(fractions), **measured}, supply, {}, pressure, records, inputs, (), main, True)
+    fed, zone = gettered(setting, furnace, fractions)
+    notes: tuple[str, ...] = vapours(setting, furnace)
     if not entering:
-        notes = ("line and furnace assumed perfect: no leak, outgassing or exhaust given",)
-    return Load(activity, supply, {}, pressure, records, inputs, notes, _main(fractions), True)
+        notes = (*notes, "line and furnace assumed perfect: no leak, outgassing or exhaust given")
+    fed, air, left, said = _with_air(setting, furnace, fed, total)
+    return Load(
+        mixed(fed),
+        supply,
+        {},
+        pressure,
+        (*records, *zone, *air),
+        (*inputs, *left),
+        (*notes, *said),
+        main,
+        True,
+    )
+
+
+def _with_air(
+    setting: Setting, furnace: Furnace, fed: Mapping[str, Array], flow: Array
+) -> tuple[dict[str, Array], tuple[Found, ...], tuple[Given, ...], tuple[str, ...]]:
+    """Add the air that purging left in the vessel, averaged over its sweeping, to the feed gas."""
+    moles = vessel_moles(setting, furnace)
+    left, inputs, notes = air_left(setting, furnace, setting.choice.name)
+    if moles is None or not np.any(left > 0):
+        return dict(fed), (), inputs, notes
+    rows = setting.library.rows("atmospheres", atmosphere=LEAK)
+    air, zone = gettered(setting, furnace, {r.words["species"]: composition(setting, r) for r in rows})
+    share = swept(left, flow, moles, setting.duration)
+    mixed = {name: fed.get(name, np.zeros(1)) + share * air.get(name, np.zeros(1)) for name in {*fed, *air}}
+    return mixed, (*(Found(row) for row in rows), *zone), inputs, notes
 
 
 def _main(fractions: Mapping[str, Array]) -> str:
@@ -253,18 +297,20 @@ def _pumped(
         activity = {name: rate / (speed * P0) for name, rate in entering.items()}
         reached = sum(activity.values(), np.zeros(1)) * P0
         supply = speed * P0 / (R * T_ROOM * area)
-        return Load(activity, supply, {}, reached, records, (*used, furnace.pump), ())
+        notes = vapours(setting, furnace)
+        return Load(activity, supply, {}, reached, records, (*used, furnace.pump), notes)
     gauge = Given(f"{atmosphere.pressure.key}/gauge", "lognormal", 1.0 / GAUGE, GAUGE, True)
     local = pressure * setting.sample(gauge)
     residual = fractions
     if not residual:
         rows = setting.library.rows("atmospheres", atmosphere=outgassing(setting, furnace))
-        residual = {
-            r.words["species"]: r.fields["fraction_ppm_mol"] * 1e-6 * spread_factor(setting, r) for r in rows
-        }
+        residual = {r.words["species"]: composition(setting, r) for r in rows}
         records = tuple(Found(r) for r in rows)
     activity = {name: x * local / P0 for name, x in residual.items()}
-    notes = ("gauge read as local partial pressure: give leak, outgassing and pump to narrow this",)
+    notes = (
+        "gauge read as local partial pressure: give leak, outgassing and pump to narrow this",
+        *vapours(setting, furnace),
+    )
     return Load(activity, None, {}, local, records, (*inputs, gauge), notes)
 
 
@@ -276,7 +322,7 @@ def gas_conductance(setting: Setting, name: str, load: Load) -> tuple[Curve, tup
     metal cannot take more of it than the stream brings.
     """
     T = setting.T[:, np.newaxis]
-    parts: list[Array | None] = [load.supply]
+    parts: list[Array | None] = []
     records: list[Found] = []
     transport, film = _transport(setting, name, load.main), _film(setting, load)
     if transport is not None and film is not None:
@@ -288,9 +334,14 @@ def gas_conductance(setting: Setting, name: str, load: Load) -> tuple[Curve, tup
         records += [transport, film]
     alpha, sticking = _sticking(setting, name)
     molar_mass = sum(_mass(setting, element) * count for element, count in atoms(name).items())
-    parts.append(alpha * P0 * vapour_speed(T, molar_mass))
+    flight = P0 * vapour_speed(T, molar_mass)
     records.extend(sticking)
-    return curve(setting, np.log(series(*parts))), tuple(records)
+    metal = series(*parts, alpha * flight)
+    if not wraps(setting):
+        return curve(setting, np.log(series(load.supply, metal))), tuple(records)
+    free = series(*parts, flight)
+    inward, foil = wrapped(setting, name, load.area, load.supply, free, metal)
+    return curve(setting, np.log(inward)), (*records, *foil)
 
 
 def _film(setting: Setting, load: Load) -> Found | None:
@@ -349,7 +400,7 @@ def _evaporation(setting: Setting, load: Load) -> list[tuple[Carrier, tuple[Foun
             limit="gas film",
         )
         if not isinstance(made, Gap):
-            rows.append((made[0], (*made[1], *found)))
+            rows.append((made[0], (*made[1], *found, *load.records)))
     return rows
 
 
@@ -369,10 +420,10 @@ def host_evaporation(contact: Contact, setting: Setting) -> tuple[Array, tuple[F
     if isinstance(vapour, Gap):
         return vapour
     area = setting.sample(contact.area)
-    load = gas_load(atmosphere, setting, area)
+    load = replace(gas_load(atmosphere, setting, area), area=area)
     conductance, found = gas_conductance(setting, setting.host, load)
     activity = np.exp((condensed.value - vapour.value) / (R * T))
-    return np.asarray(np.exp(conductance.ln) * activity * area), (*condensed.found, *vapour.found, *found)
+    return np.asarray(np.exp(conductance.ln) * activity * area), (*condensed.found, *vapour.found, *found, *load.records)
 
 
-__all__ = ["Load", "gas", "gas_conductance", "gas_load", "gases", "host_evaporation"]
+__all__ = ["Load", "composition", "gas", "gas_conductance", "gas_load", "gases", "host_evaporation"]
