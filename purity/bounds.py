@@ -51,6 +51,12 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
     "sticking": {"probability": (1e-8, 1.0)},
     "gas_transport": {"D_m2_per_s": (1e-6, 1e-3), "T_ref_K": (200.0, 2000.0), "exponent": (1.4, 2.1)},
     "transfer": {"exponent": (0.1, 1.0)},
+    "partition": {"k0": (1e-9, 20.0)},
+    "moulds": {
+        "effusivity_J_per_m2_K_s05": (300.0, 6e4),
+        "interface_W_per_m2_K": (50.0, 3e4),
+        "water_kg_per_m2": (1e-7, 1.0),
+    },
     "films": {"Q_kJ_per_mol": (20.0, 400.0), "density_kg_per_m3": (1000.0, 15000.0)},
     "miedema": {
         "phi_V": (1.0, 8.0),

@@ -174,6 +174,16 @@ TABLES: Mapping[str, Table] = {
     "gas_transport": Table(("gas", "in"), ("D_m2_per_s", "T_ref_K", "exponent"), spread="spread_ln"),
     # exchange at walls and free surfaces by stirring: k = value (D / D_ref)^exponent
     "transfer": Table(("place", "stirring"), ("k_m_per_s", "D_ref_m2_per_s", "exponent"), spread="spread_ln"),
+    # content of the solid over that of the liquid it freezes from, at the melting point of the host
+    "partition": Table(
+        ("host", "solute"), ("k0",), spread="spread_ln", law="constant", unit="content of solid over liquid"
+    ),
+    # a mould while it is filled: sqrt(k rho c), heat passed at the face, water on the face
+    "moulds": Table(
+        ("material",),
+        ("effusivity_J_per_m2_K_s05", "interface_W_per_m2_K", "water_kg_per_m2"),
+        spread="spread_factor",
+    ),
     # what a furnace's hot zone is made of: what it gives off (row set of atmospheres) and takes from the gas
     "hot_zones": Table(
         ("zone",),

@@ -84,6 +84,8 @@ SLIPS = {
     "sticking": ("probability", 1e3),
     "gas_transport": ("D_m2_per_s", 1e3),
     "transfer": ("k_m_per_s", 1e3),
+    "partition": ("k0", 1e3),
+    "moulds": ("interface_W_per_m2_K", 1e3),
     "hot_zones": ("getter_share", 1e3),
     "priors": ("high_ppm", 1e3),
     "hazards": ("T_min_K", 1e3),
