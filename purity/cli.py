@@ -10,7 +10,7 @@ import os
 import sys
 from collections.abc import Iterable
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, NoReturn, TextIO
+from typing import TYPE_CHECKING, Annotated, Any, NoReturn, TextIO
 
 import typer
 
@@ -109,15 +109,14 @@ def _write(stream: TextIO, text: str) -> None:
     stream.flush()
 
 
-def _save(path: Path, text: str) -> None:
+def _save(path: Path, made: str | bytes) -> None:
     """Write a file whole or not at all."""
     from tempfile import NamedTemporaryFile
 
-    with NamedTemporaryFile(
-        "w", encoding="utf-8", newline="", dir=path.parent, prefix=f".{path.name}.", delete=False
-    ) as part:
+    content = made.encode("utf-8") if isinstance(made, str) else made
+    with NamedTemporaryFile("wb", dir=path.parent, prefix=f".{path.name}.", delete=False) as part:
         try:
-            part.write(text)
+            part.write(content)
             part.close()
             Path(part.name).chmod(0o666 & ~_umask())
             Path(part.name).replace(path)
@@ -289,8 +288,12 @@ def affinity(
         list[str] | None, typer.Option(help="A wall; may be repeated. All that hold IMPURITY if not given.")
     ] = None,
     atmosphere: Annotated[str | None, typer.Option(help="Gas that sets oxygen, nitrogen, hydrogen.")] = None,
+    figure: Annotated[
+        Path | None, typer.Option(help="Draw energy against content: a .svg or .png file.")
+    ] = None,
     as_json: AsJson = False,
     data: Folder = None,
+    force: Force = False,
 ) -> None:
     """Say how far IMPURITY would go into HOST: activity, driving force, ceilings; no rates."""
     from dataclasses import asdict
@@ -305,7 +308,25 @@ def affinity(
     _known(library, host)
     found = answer(library, host, impurity, number(temperature, "temperature"), phase, against, atmosphere)
     facts = asdict(found)
+    if figure:
+        _draw(facts, figure, force)
     _say(plain_json(facts) if as_json else render(facts, width=_width()))
+
+
+def _draw(facts: dict[str, Any], figure: Path, force: bool) -> None:
+    """Write the figure of an affinity, whole or not at all."""
+    from purity.report.figures import FORMATS, affinity
+
+    kind = figure.suffix.lstrip(".").lower()
+    if kind not in FORMATS:
+        _end(BAD_INPUT, f"{figure}: a figure ends in .{' or .'.join(FORMATS)}")
+    _free(figure, force)
+    try:
+        drawn = affinity(facts, kind)
+    except ModuleNotFoundError:
+        _end(BAD_INPUT, 'figures need matplotlib: pip install "purity[figures]"')
+    _save(figure, drawn)
+    _note(f"wrote {figure}")
 
 
 @app.command(epilog="Example: purity new lot.toml, then edit it, then purity rank lot.toml")
