@@ -276,7 +276,7 @@ def _choice_result(
         assumed_share=share,
         lines=tuple(lines),
         host_loss_percent=loss,
-        attack_um=None,
+        attack_um=None if passed.attack is None else 1e6 * float(np.median(passed.attack)),
         warnings=(*passed.notes, *_numerical(passed), *for_choice(passed.choice, lot, library)),
         species=tuple(dict.fromkeys(s for one in passed.parcels.values() for s in one.species)),
         measure=measure,

@@ -6,7 +6,7 @@ They are moved together, each by its own contacts, at the contents that the lead
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -165,7 +165,20 @@ def move_followers(
     half = follow_along(whole, channels, cap, schedule, nodes=NODES // 2)
     size = np.maximum(done.total, 1e-2 * np.maximum(whole, 1e-12))
     error = np.quantile(np.abs(done.total - half.total) / (3.0 * size), 0.95, axis=-1)
-    return [_part(f, way, rows, done, float(error[f]), exposures, channels) for f, way in enumerate(ways)]
+    parts = [_part(f, way, rows, done, float(error[f]), exposures, channels) for f, way in enumerate(ways)]
+    return [_skimmed(part, setting) for part in parts]
+
+
+def _skimmed(part: Part, setting: Setting) -> Part:
+    """Take the share of the compound that holds a follower out of the bath; a last row of its ledger."""
+    share = setting.choice.removal.get(part.skins[0][0].name) if part.skins else None
+    if share is None:
+        return part
+    state = part.pickup.state
+    taken = setting.sample(share) * state.suspended
+    ledger = np.concatenate([part.pickup.ledger, -taken[np.newaxis]])
+    left = replace(state, suspended=state.suspended - taken)
+    return replace(part, pickup=replace(part.pickup, state=left, ledger=ledger))
 
 
 def _channels(

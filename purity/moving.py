@@ -183,7 +183,17 @@ def _advance(
     )
     diffusivity = None if setting.liquid else _diffusivity(setting, index)
     host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
-    pickup = advance(state, host, setting.choice.form, schedule, sub, history=history, nodes=NODES)
+    taken = {name: setting.sample(share) for name, share in setting.choice.removal.items()}
+    pickup = advance(
+        state,
+        host,
+        setting.choice.form,
+        schedule,
+        sub,
+        history=history,
+        nodes=NODES,
+        removal=taken if taken and setting.liquid else None,
+    )
     names = tuple(dict.fromkeys(carrier.name for one in sub for carrier in one.carriers))
     return Part(index, tuple(rows), pickup, tuple(own.values()), (), names)
 

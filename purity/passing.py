@@ -14,6 +14,7 @@ from purity.contacts.parcel import Parcel, parcel
 from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
+from purity.finishing import Done, extra_rows, finish, removed, strip
 from purity.followers import Part, total
 from purity.kinetics.advance import HELD_BACK_BY, State
 from purity.kinetics.arrhenius import curve_integral
@@ -57,6 +58,8 @@ class Passed:
     notes : tuple of str
     parcels : mapping of contact to Parcel
         Where the walls of a melt lead.
+    attack : (N,) array or None
+        Depth of wall lost, m, where one is eaten.
     """
 
     choice: Choice
@@ -79,6 +82,7 @@ class Passed:
     series: Mapping[str, tuple[Array, Array]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
     parcels: Mapping[int, Parcel] = field(default_factory=dict)
+    attack: Array | None = None
 
 
 def make_setting(
@@ -162,15 +166,35 @@ def pass_step(
     Passed
     """
     setting, schedule = make_setting(lot, choice, impurities, molar_mass, library, draws, exclude)
-    exposed = tuple(expose(contact, setting) for contact in choice.contacts)
-    entered = _enter(state, setting, exposed)
+    exposed = (*(expose(contact, setting) for contact in choice.contacts), *extra_rows(setting))
+    cleaned, off, said = strip(state, setting)
+    entered = _enter(cleaned, setting, exposed)
     n = draws.n
     ledger = np.zeros((len(exposed), len(impurities), n))
     for c, one in enumerate(exposed):
         if one.gain is not None:
             ledger[c] += one.gain
+    for c, taken in off.items():
+        ledger[c] += taken
     parts = move(entered, setting, schedule, exposed, history)
-    return _gather(state, entered, setting, schedule, exposed, ledger, parts)
+    removed(ledger, exposed, parts)
+    passed = _gather(state, entered, setting, schedule, exposed, ledger, parts)
+    return _finished(passed, entered, said)
+
+
+def _finished(passed: Passed, entered: State, said: tuple[str, ...]) -> Passed:
+    """Have the last word: walls that were eaten, furnaces that were opened."""
+    begun = Done(passed.after, passed.ledger, passed.attacked, None, passed.records, (*passed.notes, *said))
+    done = finish(begun, entered, passed.setting, passed.exposed)
+    return replace(
+        passed,
+        after=done.after,
+        ledger=done.ledger,
+        attacked=done.attacked,
+        attack=done.attack,
+        records=done.records,
+        notes=done.notes,
+    )
 
 
 def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:

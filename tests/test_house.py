@@ -101,7 +101,7 @@ ALLOWED: dict[str, set[str]] = {
     | DRIVING_FORCE
     | CONTACTS
     | {"kinetics.exposure", "kinetics.transfer", "kinetics.films", "kinetics.arrhenius"}
-    | {"kinetics.particles", "kinetics.casting"},
+    | {"kinetics.schedule", "kinetics.particles", "kinetics.casting"},
     "contacts": BELOW_CONTACTS | DRIVING_FORCE | CONTACTS | {"kinetics.exposure"},
     "result": {"errors"},
     "uncertainty": {"result"},
@@ -109,7 +109,8 @@ ALLOWED: dict[str, set[str]] = {
     "cautions": {"scenario", "database"},
     "followers": BELOW_ASSESS,
     "moving": BELOW_ASSESS | {"followers"},
-    "passing": BELOW_ASSESS | {"followers", "moving"},
+    "finishing": BELOW_ASSESS | {"followers"},
+    "passing": BELOW_ASSESS | {"followers", "moving", "finishing"},
     "lines": BELOW_ASSESS | {"followers", "passing"},
     # the package itself, for its version
     "assess": BELOW_ASSESS | {"", "followers", "passing", "lines"},

@@ -171,7 +171,7 @@ def _sealed(
 ) -> Load:
     """Return gas shut in with the metal: what was filled in, what purging left, after the hot zone."""
     mol = pressure * setting.sample(volume) / (R * T_ROOM)
-    left, used, notes = air_left(setting, furnace, setting.choice.name)
+    left, used, notes = air_left(setting, furnace)
     rows = setting.library.rows("atmospheres", atmosphere=LEAK) if np.any(left > 0) else ()
     air = {row.words["species"]: left * composition(setting, row) for row in rows}
     held = {n: fractions.get(n, np.zeros(1)) + air.get(n, np.zeros(1)) for n in {*fractions, *air}}
@@ -265,7 +265,7 @@ def _with_air(
 ) -> tuple[dict[str, Array], tuple[Found, ...], tuple[Given, ...], tuple[str, ...]]:
     """Add the air that purging left in the vessel, averaged over its sweeping, to the feed gas."""
     moles = vessel_moles(setting, furnace)
-    left, inputs, notes = air_left(setting, furnace, setting.choice.name)
+    left, inputs, notes = air_left(setting, furnace)
     if moles is None or not np.any(left > 0):
         return dict(fed), (), inputs, notes
     rows = setting.library.rows("atmospheres", atmosphere=LEAK)
@@ -423,7 +423,12 @@ def host_evaporation(contact: Contact, setting: Setting) -> tuple[Array, tuple[F
     load = replace(gas_load(atmosphere, setting, area), area=area)
     conductance, found = gas_conductance(setting, setting.host, load)
     activity = np.exp((condensed.value - vapour.value) / (R * T))
-    return np.asarray(np.exp(conductance.ln) * activity * area), (*condensed.found, *vapour.found, *found, *load.records)
+    return np.asarray(np.exp(conductance.ln) * activity * area), (
+        *condensed.found,
+        *vapour.found,
+        *found,
+        *load.records,
+    )
 
 
 __all__ = ["Load", "composition", "gas", "gas_conductance", "gas_load", "gases", "host_evaporation"]

@@ -87,9 +87,7 @@ def vapours(setting: Setting, furnace: Furnace) -> tuple[str, ...]:
     return (f"{zone} hot zone: {what} may land on the metal; no record says how much, so none is counted",)
 
 
-def air_left(
-    setting: Setting, furnace: Furnace, area_key: str
-) -> tuple[Array, tuple[Given, ...], tuple[str, ...]]:
+def air_left(setting: Setting, furnace: Furnace) -> tuple[Array, tuple[Given, ...], tuple[str, ...]]:
     """Return the share of the gas in the vessel that is still air after purging.
 
     Returns
@@ -104,7 +102,8 @@ def air_left(
     cycles = furnace.purges
     if cycles == 0:
         return np.ones(1), (), ()
-    left = Given(f"{area_key}/air left", "lognormal", low**cycles, high**cycles, True)
+    where = furnace.volume.key.rpartition("/")[0] if furnace.volume else "furnace"
+    left = Given(f"{where}/air left", "lognormal", low**cycles, high**cycles, True)
     return setting.sample(left), (left,), ()
 
 
