@@ -216,6 +216,8 @@ def _cast(keys: Keys, known: Known, profile: Points | None) -> tuple[Form | None
     if area is None and form is not None:
         area = exact(keys.path("form"), form.area)
     inputs = {k: g for k in ("freezing_time", "front_speed", "crop") if (g := keys.given(k)) is not None}
+    if (water := keys.given("mould_water")) is not None:
+        inputs["water"] = water
     found = atmosphere(keys, ROOM, open_room=False)
     return form, walls(keys, "mould", area, inputs) + melt_gas(keys, found, None)
 

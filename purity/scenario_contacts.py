@@ -4,7 +4,7 @@ Inputs of a contact, by role (SI):
 
 ========== ========================================================================================
 wall       none
-mould      freezing_time (s), front_speed (m/s), crop (share cut off)
+mould      freezing_time (s), front_speed (m/s), crop (share cut off), water (kg/m2)
 gas        pour_time (s), pour_area (m2) in a cast; its area is the free surface of a melt, the whole
            surface of a solid
 support    contact_share (share of the metal's surface); its area is that share of the surface

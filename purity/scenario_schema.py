@@ -313,6 +313,7 @@ class StepTable(Form):
     freezing_time: Time | None = None
     front_speed: Velocity | None = None
     crop: Share | None = None
+    mould_water: MassPerArea | None = None
 
 
 class TopTable(Form):
@@ -332,7 +333,7 @@ PROCESS_KEYS: Final[Mapping[str, frozenset[str]]] = {
     "melt": _GAS | _BATH | {"furnace", "charge", "heel", "dust", "neighbour", "removal"},
     "cast": _GAS
     | {"form", "wall_area", "free_surface", "container", "immersed", "furnace", "removal"}
-    | {"pour", "freezing_time", "front_speed", "crop", "vent"},
+    | {"pour", "freezing_time", "front_speed", "crop", "mould_water", "vent"},
     "heat": _GAS | _SOLID | {"furnace", "neighbour", "vent"},
     "clean": _SOLID | {"clean"} | _GAS,
     "touch": _SOLID | {"handling"} | _GAS,
