@@ -6,9 +6,10 @@ draws. Physics is :mod:`purity.passing`; what is said of it is :mod:`purity.line
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
+from difflib import get_close_matches
 from functools import partial
 from itertools import product
 
@@ -16,12 +17,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity import __version__
+from purity.catalogue import bibliography
 from purity.cautions import cautions, for_choice
 from purity.constants import GAS_FORMERS
 from purity.database import Found, Gap, Library
 from purity.draws import Draws, sample
 from purity.driving_force.pure import atoms
-from purity.errors import ScenarioError
+from purity.errors import Fault, MissingRecordError, ScenarioError
 from purity.followers import total
 from purity.kinetics.advance import State
 from purity.lines import Column, block, columns, counts, from_nothing, group_columns, group_line, line, to_ppm
@@ -36,6 +38,10 @@ Array = NDArray[np.float64]
 
 #: Most runs of a choice that one assessment may make for its routes.
 MOST_RUNS = 400
+#: Share of a content that an error of the time steps has to reach to be told.
+WORTH_SAYING = 0.05
+
+Came = Mapping[str, tuple[Found, ...]]
 
 
 def assess(
@@ -78,34 +84,33 @@ def assess(
         history=history,
     )
     start = initial(scenario.lot, impurities, molar_mass, library, draws)
+    known = assumed_records(scenario.lot, impurities, library)
     walked: dict[tuple[str, ...], Passed] = {}
     steps: list[StepResult] = []
     taken: tuple[str, ...] = ()
     for number, step in enumerate(scenario.steps):
-        before = start if not taken else walked[taken].after
-        passed = _run(run, before, step.choices, executor)
+        before, came = (start, known) if not taken else (walked[taken].after, walked[taken].behind)
+        passed = _run(run, before, came, step.choices, executor)
         for one in passed:
             walked[(*taken, one.choice.name)] = one
         steps.append(_step_result(step.name, step.process, taken, passed, scenario, library, draws))
         taken = (*taken, _next(steps[-1], route, number, scenario))
-    routes = _routes(scenario, run, start, walked, draws)
+    routes = _routes(scenario, run, (start, known), walked, draws)
     gaps = tuple(
         dict.fromkeys(gap_text(g) for one in walked.values() for found in one.gaps.values() for g in found)
     )
-    used = {
-        q
-        for one in walked.values()
-        for found in one.records.values()
-        for q in (f.record.source for f in found)
-    }
+    gone = tuple(f"{quantity}: withdrawn by your own table" for quantity in sorted(library.withdrawn))
+    used = dict.fromkeys(
+        f.record.quantity for one in walked.values() for found in one.records.values() for f in found
+    )
     return Result(
         Stamp(__version__, library.data_hash, scenario_hash(scenario), draws.seed, draws.n),
         _facts(scenario, walked.values()),
         tuple(steps),
         routes,
         cautions(scenario, library),
-        gaps,
-        tuple(sorted(used)),
+        tuple(dict.fromkeys((*gone, *gaps))),
+        tuple(sorted({citation for _, citation, _ in bibliography(library, used)})),
     )
 
 
@@ -127,14 +132,14 @@ def molar_masses(library: Library, elements: Sequence[str]) -> dict[str, float]:
 
     Raises
     ------
-    LookupError
+    MissingRecordError
         For an element that the table does not hold.
     """
     masses = {}
     for element in elements:
         found = library.find("elements", element=element)
         if isinstance(found, Gap):
-            raise LookupError(f"no atomic mass of {element}")
+            raise MissingRecordError(found.quantity, f"atomic mass of {element}")
         masses[element] = found.record.fields["molar_mass_g_per_mol"] / 1000.0
     return masses
 
@@ -152,12 +157,24 @@ def initial(
     return State(x, np.zeros_like(x))
 
 
-def prior(library: Library, element: str) -> Given:
-    """Return what an uncertified content is taken to be, mass fraction."""
+def assumed_records(lot: Lot, impurities: Sequence[str], library: Library) -> dict[str, tuple[Found, ...]]:
+    """Return the record behind the start of each element that the certificate leaves out."""
+    return {e: (_prior(library, e),) for e in impurities if e not in lot.certificate}
+
+
+def _prior(library: Library, element: str) -> Found:
     found = library.find("priors", kind=f"uncertified {element}")
     if isinstance(found, Gap):
         found = library.find("priors", kind="uncertified metal")
-    assert isinstance(found, Found)
+        if isinstance(found, Gap):
+            raise MissingRecordError(found.quantity, f"what to take for {element}, which is not certified")
+        return Found(found.record, found.rivals, "estimate")
+    return found
+
+
+def prior(library: Library, element: str) -> Given:
+    """Return what an uncertified content is taken to be, mass fraction."""
+    found = _prior(library, element)
     low, high = found.record.fields["low_ppm"] * 1e-6, found.record.fields["high_ppm"] * 1e-6
     return Given(f"lot/uncertified/{element}", "lognormal", low, high, True)
 
@@ -169,11 +186,15 @@ def gap_text(gap: Gap) -> str:
 
 
 def _run(
-    run: partial[Passed], before: State, choices: Sequence[Choice], executor: Executor | None
+    run: Callable[..., Passed],
+    before: State,
+    came: Came,
+    choices: Sequence[Choice],
+    executor: Executor | None,
 ) -> list[Passed]:
     if executor is None:
-        return [run(before, choice) for choice in choices]
-    return list(executor.map(run, [before] * len(choices), choices))
+        return [run(before, choice, came=came) for choice in choices]
+    return list(executor.map(partial(run, came=came), [before] * len(choices), choices))
 
 
 def _next(done: StepResult, route: Sequence[str] | None, number: int, scenario: Scenario) -> str:
@@ -181,7 +202,10 @@ def _next(done: StepResult, route: Sequence[str] | None, number: int, scenario: 
     if route is not None and number < len(route):
         names = [choice.name for choice in scenario.steps[number].choices]
         if route[number] not in names:
-            raise ScenarioError(scenario.title, ()) from LookupError(route[number])
+            name = scenario.steps[number].name
+            near = ", ".join(get_close_matches(route[number], names, 3)) or ", ".join(names)
+            what = f"step {name!r} has no choice {route[number]!r}; nearest: {near}"
+            raise ScenarioError(scenario.title, [Fault(0, "route", what)])
         return route[number]
     ranked = [choice for choice in done.choices if choice.rank is not None]
     first = min(ranked, key=lambda choice: choice.rank or 0) if ranked else done.choices[0]
@@ -211,8 +235,11 @@ def _weigh(passed: Passed, lot: Lot) -> _Weighed:
 
 
 def _standing_state(passed: Passed, lot: Lot) -> tuple[StateWord, tuple[int, int]]:
-    needed = counts(lot)
-    assessed = sum(not passed.gaps.get(element) for element in needed)
+    needed = [*counts(lot), *(("metals",) if lot.metals_limit is not None else ())]
+    missing = {element for element, gaps in passed.gaps.items() if gaps}
+    if any(block(element) == "metals" for element in missing & set(passed.impurities)):
+        missing.add("metals")
+    assessed = sum(element not in missing for element in needed)
     attacked = bool(passed.attacked.mean() > 0.05)
     return standing_state(assessed, len(needed), attacked=attacked), (assessed, len(needed))
 
@@ -258,7 +285,7 @@ def _choice_result(
     lot, blocks = scenario.lot, max(draws.blocks, 1)
     found = columns(passed, lot)
     lines = [line(passed, column, lot, blocks) for column in found.values() if _worth_a_line(passed, column)]
-    lines += [group_line(column, blocks) for column in group_columns(found, lot)]
+    lines += [group_line(passed, column, lot, blocks) for column in group_columns(found, lot)]
     deciding = None if standing.deciding is None else weighed.names[standing.deciding]
     share, measure = _assumed(passed, found, deciding, draws)
     loss = float(np.median(passed.host_loss)) * 100.0
@@ -277,7 +304,7 @@ def _choice_result(
         lines=tuple(lines),
         host_loss_percent=loss,
         attack_um=None if passed.attack is None else 1e6 * float(np.median(passed.attack)),
-        warnings=(*passed.notes, *_numerical(passed), *for_choice(passed.choice, lot, library)),
+        warnings=(*passed.notes, *_numerical(passed, lot), *for_choice(passed.choice, lot, library)),
         species=tuple(dict.fromkeys(s for one in passed.parcels.values() for s in one.species)),
         measure=measure,
     )
@@ -289,10 +316,13 @@ def _worth_a_line(passed: Passed, column: Column) -> bool:
     return column.certified or column.limit is not None or moved or bool(passed.gaps.get(column.element))
 
 
-def _numerical(passed: Passed) -> tuple[str, ...]:
-    texts = []
-    if passed.error > 1e-2:
-        texts.append(f"time steps leave an error of up to {passed.error:.0%} in this choice")
+def _numerical(passed: Passed, lot: Lot) -> tuple[str, ...]:
+    needed = counts(lot)
+    texts = [
+        f"time steps leave an error of up to {error:.0%} in {element}"
+        for element, error in zip(passed.impurities, passed.errors, strict=True)
+        if element in needed and error > WORTH_SAYING
+    ]
     if passed.flags.any():
         texts.append(
             f"{passed.flags.mean():.1%} of the draws were not solved cleanly and are kept as they are"
@@ -339,8 +369,8 @@ def _facts(scenario: Scenario, walked: Iterable[Passed]) -> ScenarioFacts:
 
 def _routes(
     scenario: Scenario,
-    run: partial[Passed],
-    start: State,
+    run: Callable[..., Passed],
+    start: tuple[State, Came],
     walked: dict[tuple[str, ...], Passed],
     draws: Draws,
 ) -> tuple[RouteResult, ...]:
@@ -353,12 +383,12 @@ def _routes(
     by_name = [{choice.name: choice for choice in step.choices} for step in scenario.steps]
     ends = []
     for path in paths:
-        before = start
+        before, came = start
         for depth in range(len(path)):
             prefix = path[: depth + 1]
             if prefix not in walked:
-                walked[prefix] = run(before, by_name[depth][path[depth]])
-            before = walked[prefix].after
+                walked[prefix] = run(before, by_name[depth][path[depth]], came=came)
+            before, came = walked[prefix].after, walked[prefix].behind
         ends.append([walked[path[: depth + 1]] for depth in range(len(path))])
     states = [_route_state(legs, lot) for legs in ends]
     weighed = [_weigh(legs[-1], lot) for legs in ends]

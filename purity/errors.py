@@ -4,6 +4,7 @@ PurityError
 ├── ScenarioError     a scenario file that cannot be run; holds every fault found
 ├── DataError         a table that breaks the rules of the library
 ├── UnitError         a quantity that cannot be read
+├── MissingRecordError   a record without which nothing can be computed
 ├── OutOfRangeError   a value outside the validity of a method (dilute law, film law)
 └── IllPosedError     an equilibrium that the given species cannot describe
 """
@@ -20,6 +21,23 @@ class PurityError(Exception):
 
 class UnitError(PurityError):
     """A quantity whose text, unit or dimension cannot be read."""
+
+
+class MissingRecordError(PurityError):
+    """A record without which nothing can be computed at all.
+
+    Parameters
+    ----------
+    quantity : str
+        What is missing, as the tables name it.
+    what : str
+        What it is needed for.
+    """
+
+    def __init__(self, quantity: str, what: str) -> None:
+        self.quantity = quantity
+        table = quantity.split(":")[0]
+        super().__init__(f"no table holds {quantity} ({what}): put a row for it in your own {table}.csv")
 
 
 class OutOfRangeError(PurityError):

@@ -126,8 +126,10 @@ def _way(
         least = np.minimum(least, np.exp(cap[0].ln_k.ln.min(axis=0)))
     made = [(c, follow(k, element, course.lowest, least)) for c, k in traces]
     behind = {int(i) for _, k in traces for i in np.flatnonzero(k.nu)}
-    if cap is not None and cap[0].name in course.seen:
-        behind |= set(np.flatnonzero(course.seen[cap[0].name][0]).tolist())
+    for found in () if cap is None else cap[1]:
+        compound = course.seen.get(found.record.words.get("formula", ""))
+        if compound is not None and compound[0][element] > 0:
+            behind |= set(np.flatnonzero(compound[0]).tolist())
     shared = {(c, int(i), float(k.nu[i] / k.nu[element])) for c, k in traces for i in np.flatnonzero(k.nu)}
     return Way(
         element,

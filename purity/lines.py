@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -22,6 +22,8 @@ from purity.uncertainty import band, chance
 
 Array = NDArray[np.float64]
 
+#: What is said of a sum in which the certificate does not name every member.
+UNCERTIFIED_MEMBERS = "members without a certificate count with what they gain"
 #: Mass fraction to mass ppm.
 PPM = 1e6
 
@@ -112,7 +114,7 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         pickup=band(column.end - column.start) if gap is None else None,
         limit=limit,
         margin=margin(end.high, limit) if known and limit is not None else None,
-        worst=None,
+        worst=_worst(passed, i, scale) if known else None,
         detection=None
         if certified is None or certified.detection_limit is None
         else certified.detection_limit * PPM,
@@ -129,12 +131,25 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         contacts=_contact_lines(passed, i, column, scale, ceilings),
         forms=_forms(passed, element),
         records=tuple(sorted(found.record.quantity for found in records)),
-        quality=max((found.record.quality for found in records), default=None),
+        quality=worst_class(records),
         extrapolated=any(_extrapolated(found, passed) for found in records),
         gap=gap or (None if column.certified else "not certified: the end is not known"),
         series=_series(passed, element, scale),
         start_method=None if certified is None else certified.method,
     )
+
+
+def worst_class(records: Iterable[Found]) -> str | None:
+    """Return the worst class among records; what was taken for want of a record is an estimate, D."""
+    return max(("D" if f.how == "estimate" else f.record.quality for f in records), default=None)
+
+
+def _worst(passed: Passed, i: int, scale: float) -> float | None:
+    """95 % point of the content at the worst position: what is dissolved parts, what is suspended does not."""
+    factor = passed.worst.get(passed.impurities[i])
+    if factor is None:
+        return None
+    return band((total(passed.after)[i] + (factor - 1.0) * passed.after.x[i]) * scale).high
 
 
 def block(element: str) -> Block:
@@ -254,12 +269,15 @@ def group_columns(found: Mapping[str, Column], lot: Lot) -> list[Column]:
     return rows
 
 
-def group_line(column: Column, blocks: int) -> Line:
+def group_line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
     """Return the line of a sum with a limit of its own."""
+    members = lot.groups.get(column.element) or [e for e in passed.impurities if block(e) == "metals"]
+    found = {f.record.quantity: f for e in members for f in passed.records.get(e, ())}
+    missing = next((text for e in members if (text := _gap(passed, e))), None)
     start, end = band(column.start), band(column.end)
     limit = column.limit
     if limit is None:
-        raise ValueError(f"the sum {column.element} has no limit")
+        raise TypeError(f"the sum {column.element} has no limit")
     over, error = chance(column.end, limit, blocks)
     return Line(
         impurity=column.element,
@@ -282,8 +300,8 @@ def group_line(column: Column, blocks: int) -> Line:
         shares={},
         contacts=(),
         forms=(),
-        records=(),
-        quality=None,
-        extrapolated=False,
-        gap=None if column.certified else "members without a certificate count with what they gain",
+        records=tuple(sorted(found)),
+        quality=worst_class(found.values()),
+        extrapolated=any(_extrapolated(one, passed) for one in found.values()),
+        gap=missing or (None if column.certified else UNCERTIFIED_MEMBERS),
     )

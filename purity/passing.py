@@ -9,11 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.contacts import expose
+from purity.contacts.cast import course, segregation
 from purity.contacts.gas import host_evaporation
 from purity.contacts.parcel import Parcel, parcel
 from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
+from purity.errors import MissingRecordError
 from purity.finishing import Done, extra_rows, finish, removed, strip
 from purity.followers import Part, total
 from purity.kinetics.advance import HELD_BACK_BY, State
@@ -21,6 +23,7 @@ from purity.kinetics.arrhenius import curve_integral
 from purity.kinetics.exposure import Curve
 from purity.kinetics.schedule import Schedule, segments
 from purity.moving import move
+from purity.provenance import moved_by, seen_in
 from purity.scenario import Choice, Lot, Material
 
 Array = NDArray[np.float64]
@@ -44,12 +47,16 @@ class Passed:
     settings : Setting
     exposed : tuple of Exposed
     records : mapping of element to records
+        Behind every number said of it.
+    behind : mapping of element to records
+        Behind its content as the lot leaves: earlier steps and start included.
     gaps : mapping of element to gaps
     shares : (L, I) array
         Shares of HELD_BACK_BY, middle of the draws.
     formed : mapping of element to names of compounds
     attacked, flags : (N,) bool arrays
-    error : float
+    errors : (I,) array
+        Share of the content at the end that the time steps may have left as an error.
     host_loss : (N,) array
         Share of the host that evaporated.
     hot : (N,) array
@@ -60,6 +67,8 @@ class Passed:
         Where the walls of a melt lead.
     attack : (N,) array or None
         Depth of wall lost, m, where one is eaten.
+    worst : mapping of element to (N,) array
+        Dissolved content at the worst position of a casting, after the crop, over its mean.
     """
 
     choice: Choice
@@ -71,18 +80,20 @@ class Passed:
     setting: Setting
     exposed: tuple[Exposed, ...]
     records: Mapping[str, tuple[Found, ...]]
+    behind: Mapping[str, tuple[Found, ...]]
     gaps: Mapping[str, tuple[Gap, ...]]
     shares: Array
     formed: Mapping[str, tuple[str, ...]]
     attacked: NDArray[np.bool_]
     flags: NDArray[np.bool_]
-    error: float
+    errors: Array
     host_loss: Array
     hot: Array
     series: Mapping[str, tuple[Array, Array]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
     parcels: Mapping[int, Parcel] = field(default_factory=dict)
     attack: Array | None = None
+    worst: Mapping[str, Array] = field(default_factory=dict)
 
 
 def make_setting(
@@ -105,20 +116,20 @@ def make_setting(
         melting = _melting(library, lot.host)
         T = np.maximum(T, melting)
     schedule = Schedule(*(v[:, 0] if v.shape[-1] == 1 else v for v in (time, T)))
-    low, high = float(T.min()), float(T.max())
-    knots = np.array([low]) if high - low < 0.5 else 1.0 / np.linspace(1.0 / low, 1.0 / high, KNOTS)
+    high, knots = float(T.max()), _knots(schedule)
     row = library.find("hosts", host=lot.host, phase=phase)
     if isinstance(row, Gap):
-        raise LookupError(f"the host table has no row for {lot.host} as {phase}")
+        raise MissingRecordError(row.quantity, "density of the metal")
     fields = row.record.fields
     density = fields["density_kg_per_m3"] - fields["density_slope_kg_per_m3_K"] * (high - fields["T_ref_K"])
     density = density * np.exp(row.record.spread * normal(draws, row.record.quantity)[0])
     mass = sample(draws, lot.mass)
+    cast = choice.process == "cast"
     setting = Setting(
         library,
         draws,
         lot,
-        choice,
+        replace(choice, stirring="poured") if cast else choice,
         phase,
         impurities,
         molar_mass,
@@ -128,7 +139,16 @@ def make_setting(
         density / molar_mass[lot.host],
         exclude,
     )
+    if cast:
+        schedule = course(setting, schedule, _melting(library, lot.host))
+        setting = replace(setting, T=_knots(schedule), duration=schedule.time[-1])
     return setting, schedule
+
+
+def _knots(schedule: Schedule) -> Array:
+    """Temperatures for curves, equally far apart in 1/T."""
+    low, high = float(schedule.T.min()), float(schedule.T.max())
+    return np.array([low]) if high - low < 0.5 else 1.0 / np.linspace(1.0 / low, 1.0 / high, KNOTS)
 
 
 def pass_step(
@@ -140,6 +160,7 @@ def pass_step(
     library: Library,
     draws: Draws,
     *,
+    came: Mapping[str, tuple[Found, ...]] | None = None,
     exclude: tuple[str, ...] = (),
     history: bool = False,
 ) -> Passed:
@@ -157,6 +178,8 @@ def pass_step(
         kg/mol of the host and the impurities.
     library : Library
     draws : Draws
+    came : mapping of element to records, optional
+        Behind the contents with which the lot enters.
     exclude : tuple of str
         Compounds that the user keeps from forming.
     history : bool
@@ -178,19 +201,32 @@ def pass_step(
         ledger[c] += taken
     parts = move(entered, setting, schedule, exposed, history)
     removed(ledger, exposed, parts)
-    passed = _gather(state, entered, setting, schedule, exposed, ledger, parts)
-    return _finished(passed, entered, said)
+    passed = _gather(state, entered, setting, schedule, exposed, ledger, parts, came or {})
+    done = _finished(passed, entered, said)
+    return _frozen(done) if choice.process == "cast" else done
+
+
+def _frozen(passed: Passed) -> Passed:
+    """Add where in a casting the impurities gather."""
+    worst, behind, notes = segregation(passed.setting)
+    records = {
+        element: tuple({f.record.quantity: f for f in (*found, *behind.get(element, ()))}.values())
+        for element, found in passed.records.items()
+    }
+    return replace(passed, worst=worst, records=records, notes=(*passed.notes, *notes))
 
 
 def _finished(passed: Passed, entered: State, said: tuple[str, ...]) -> Passed:
     """Have the last word: walls that were eaten, furnaces that were opened."""
-    begun = Done(passed.after, passed.ledger, passed.attacked, None, passed.records, (*passed.notes, *said))
+    notes = (*passed.notes, *said)
+    begun = Done(passed.after, passed.ledger, passed.attacked, passed.shares, None, passed.records, notes)
     done = finish(begun, entered, passed.setting, passed.exposed)
     return replace(
         passed,
         after=done.after,
         ledger=done.ledger,
         attacked=done.attacked,
+        shares=done.shares,
         attack=done.attack,
         records=done.records,
         notes=done.notes,
@@ -212,7 +248,7 @@ def _enter(state: State, setting: Setting, exposed: Sequence[Exposed]) -> State:
 def _melting(library: Library, host: str) -> float:
     found = library.find("transitions", element=host, kind="melting", to_state="liquid")
     if isinstance(found, Gap):
-        raise LookupError(f"the table of transitions has no melting point of {host}")
+        raise MissingRecordError(found.quantity, f"melting point of {host}")
     return found.record.fields["T_K"]
 
 
@@ -224,6 +260,7 @@ def _gather(
     exposed: tuple[Exposed, ...],
     ledger: Array,
     parts: Sequence[Part],
+    came: Mapping[str, tuple[Found, ...]],
 ) -> Passed:
     """Put the groups together again, with what is known of each element."""
     n, count = setting.draws.n, len(setting.impurities)
@@ -259,6 +296,9 @@ def _gather(
     after = State(x, suspended, None, np.stack(list(film.values())) if film else None, tuple(film), surface)
     loss, loss_records = _host_loss(setting, schedule, exposed)
     after, ledger = _enrich(after, ledger, setting, loss)
+    hot = np.broadcast_to(schedule.T.max(axis=0), (n,))
+    parcels = _parcels(setting, after, hot)
+    moved = moved_by(setting, exposed, parts, loss_records, came)
     return Passed(
         setting.choice,
         setting.impurities,
@@ -268,19 +308,27 @@ def _gather(
         ledger,
         setting,
         exposed,
-        _records(setting, exposed, parts, loss_records),
+        seen_in(setting, exposed, parcels.values(), moved),
+        {element: tuple(found.values()) for element, found in moved.items()},
         _gaps(exposed),
         shares,
         formed,
         attacked,
         flags,
-        max((part.pickup.error for part in parts), default=0.0),
+        _errors(parts, count),
         loss,
-        np.broadcast_to(schedule.T.max(axis=0), (n,)),
+        hot,
         series,
         tuple(dict.fromkeys(note for one in exposed for note in one.notes)),
-        _parcels(setting, after, np.broadcast_to(schedule.T.max(axis=0), (n,))),
+        parcels,
     )
+
+
+def _errors(parts: Sequence[Part], count: int) -> Array:
+    errors = np.zeros(count)
+    for part in parts:
+        errors[part.index] = np.maximum(errors[part.index], part.pickup.error)
+    return errors
 
 
 def _parcels(setting: Setting, after: State, hot: Array) -> dict[int, Parcel]:
@@ -289,7 +337,7 @@ def _parcels(setting: Setting, after: State, hot: Array) -> dict[int, Parcel]:
         return {}
     found = {}
     for c, contact in enumerate(setting.choice.contacts):
-        if isinstance(contact.body, Material):
+        if isinstance(contact.body, Material) and contact.role in ("wall", "mould"):
             one = parcel(contact.body, setting, after.x, hot)
             if one is not None:
                 found[c] = one
@@ -329,37 +377,6 @@ def _enrich(after: State, ledger: Array, setting: Setting, loss: Array) -> tuple
     ledger = ledger.copy()
     ledger[gas] += total(richer) - total(after)
     return richer, ledger
-
-
-def _records(
-    setting: Setting, exposed: Sequence[Exposed], parts: Sequence[Part], loss: tuple[Found, ...]
-) -> dict[str, tuple[Found, ...]]:
-    """Every record that a number of an element hangs on: those of all elements tied to it."""
-    row = setting.library.find("hosts", host=setting.host, phase=setting.phase)
-    density = () if isinstance(row, Gap) else (row,)
-    records: dict[str, dict[str, Found]] = {element: {} for element in setting.impurities}
-    for part in parts:
-        members = [setting.impurities[int(i)] for i in part.index]
-        used: list[Found] = [*density, *loss]
-        for one in exposed:
-            touching = [c for c in one.exposure.carriers if c.name in part.names]
-            for carrier in touching:
-                used.extend(one.carrier_records.get(carrier.name, ()))
-            if touching or one.exposure.films:
-                for member in members:
-                    used.extend(one.element_records.get(member, ()))
-        for _, found in part.skins:
-            used.extend(found)
-        behind = [f for i in part.behind for f in records[setting.impurities[i]].values()]
-        for member in members:
-            records[member] |= {found.record.quantity: found for found in (*used, *behind)}
-    for one in exposed:
-        if one.gain is None:
-            continue
-        for element, found in one.element_records.items():
-            if element in records:
-                records[element] |= {f.record.quantity: f for f in found}
-    return {element: tuple(found.values()) for element, found in records.items()}
 
 
 def _gaps(exposed: Sequence[Exposed]) -> dict[str, tuple[Gap, ...]]:

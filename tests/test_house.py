@@ -110,10 +110,11 @@ ALLOWED: dict[str, set[str]] = {
     "followers": BELOW_ASSESS,
     "moving": BELOW_ASSESS | {"followers"},
     "finishing": BELOW_ASSESS | {"followers"},
-    "passing": BELOW_ASSESS | {"followers", "moving", "finishing"},
+    "provenance": BELOW_ASSESS | {"followers"},
+    "passing": BELOW_ASSESS | {"followers", "moving", "finishing", "provenance"},
     "lines": BELOW_ASSESS | {"followers", "passing"},
     # the package itself, for its version
-    "assess": BELOW_ASSESS | {"", "followers", "passing", "lines"},
+    "assess": BELOW_ASSESS | {"", "catalogue", "followers", "passing", "lines"},
     "routes": BELOW_ASSESS | {"assess"},
     "window": BELOW_ASSESS | {"assess"},
     "levers": BELOW_ASSESS | {"assess"},

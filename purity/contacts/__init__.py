@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from purity.contacts.account import accounted
 from purity.contacts.brought import charge, dust, residue
+from purity.contacts.cast import mould, stream
 from purity.contacts.gas import gas
+from purity.contacts.neighbour import neighbour
 from purity.contacts.package import package
 from purity.contacts.setting import Expose, Exposed, Setting
 from purity.contacts.solid import support
@@ -21,6 +24,8 @@ BY_BODY: dict[type, Expose] = {
     Residue: residue,
     Package: package,
 }
+#: Contacts of a cast that act for a part of its time only.
+CAST: dict[str, Expose] = {"gas": stream, "mould": mould}
 
 
 def expose(contact: Contact, setting: Setting) -> Exposed:
@@ -36,11 +41,16 @@ def expose(contact: Contact, setting: Setting) -> Exposed:
     Exposed
         With the records behind it and the gaps in it.
     """
+    act = BY_BODY[type(contact.body)]
     if setting.choice.process == "store" and isinstance(contact.body, Atmosphere):
-        return store(contact, setting)
-    if isinstance(contact.body, Material) and not setting.liquid:
-        return support(contact, setting)
-    return BY_BODY[type(contact.body)](contact, setting)
+        act = store
+    elif contact.role == "neighbour":
+        act = neighbour
+    elif isinstance(contact.body, Material) and not setting.liquid:
+        act = support
+    elif setting.choice.process == "cast":
+        act = CAST.get(contact.role, act)
+    return accounted(act(contact, setting), contact, setting)
 
 
 __all__ = ["BY_BODY", "Exposed", "Gap", "Setting", "expose"]

@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.contacts.setting import Setting
+from purity.database import Found
 from purity.driving_force.equilibrium import Outcome, equilibrium
 from purity.driving_force.pure import atoms
 from purity.driving_force.species import gibbs, select
@@ -45,6 +46,8 @@ class Parcel:
         Largest duality gap of those, RT per mole of atoms.
     species : tuple of str
         What was allowed to form, with the reason for each.
+    found : tuple of Found
+        Records behind it.
     """
 
     ln_ceiling: Mapping[str, Array]
@@ -52,6 +55,7 @@ class Parcel:
     solved: float
     gap: float
     species: tuple[str, ...]
+    found: tuple[Found, ...] = ()
 
 
 def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel | None:
@@ -105,5 +109,10 @@ def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel |
     )
     gap = float(rest.gap[solved].max()) if solved.any() else 0.0
     return Parcel(
-        ceilings, forms, float(solved.mean()), gap, tuple(f"{s.name}: {s.why}" for s in chosen.species)
+        ceilings,
+        forms,
+        float(solved.mean()),
+        gap,
+        tuple(f"{s.name}: {s.why}" for s in chosen.species),
+        chosen.found,
     )

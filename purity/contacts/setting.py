@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from functools import lru_cache, reduce
 
@@ -110,6 +110,50 @@ class Exposed:
 
 
 Expose = Callable[..., Exposed]
+
+
+def behind(setting: Setting, *inputs: Given | None) -> tuple[Found, ...]:
+    """Return the records of inputs that a table gave: their key is the quantity of a record."""
+    rows = [setting.library.rivals(given.key)[:1] for given in inputs if given is not None]
+    return tuple(Found(record) for found in rows for record in found)
+
+
+def withdrawn(setting: Setting, *names: str) -> tuple[Gap, ...]:
+    """Return a gap for each quantity of a name, or under it, that a user's own table takes out.
+
+    Parameters
+    ----------
+    setting : Setting
+    *names : str
+        A quantity (``wetting:Cu/C``) or the first words of several (``traces:magnesia``).
+    """
+    gone = sorted(setting.library.withdrawn)
+    return tuple(
+        Gap(quantity, "withdrawn by your own table")
+        for quantity in gone
+        if any(quantity == name or quantity.startswith(f"{name}/") for name in names)
+    )
+
+
+def by_element(setting: Setting, gaps: Iterable[Gap]) -> dict[str, tuple[Gap, ...]]:
+    """Return gaps by the impurities in the formula that ends their quantity."""
+    found: dict[str, tuple[Gap, ...]] = {}
+    for gap in gaps:
+        for element in atoms(gap.quantity.split(":")[1].split("/")[-1]):
+            if element != setting.host:
+                found[element] = (*found.get(element, ()), gap)
+    return found
+
+
+def for_all(elements: Iterable[str], gaps: tuple[Gap, ...]) -> dict[str, tuple[Gap, ...]]:
+    """Return the same gaps for every element; nothing where there are none."""
+    return dict.fromkeys(elements, gaps) if gaps else {}
+
+
+def together(*found: Mapping[str, tuple[Gap, ...]]) -> dict[str, tuple[Gap, ...]]:
+    """Return gaps by element, each once."""
+    names = dict.fromkeys(name for one in found for name in one)
+    return {name: tuple(dict.fromkeys(g for one in found for g in one.get(name, ()))) for name in names}
 
 
 def curve(setting: Setting, ln: Array) -> Curve:
@@ -274,6 +318,7 @@ def exchange(
     Returns
     -------
     (Curve (I, K, N) in m/s, records by element)
+        Without limit where the table has no row: see :func:`exchange_gaps`.
     """
     if not setting.liquid:
         ln = np.zeros((len(setting.impurities), len(setting.T), 1))
@@ -283,7 +328,7 @@ def exchange(
     stirring = setting.choice.stirring or "quiescent"
     found = setting.library.find("transfer", place=place, stirring=stirring)
     if isinstance(found, Gap):
-        raise LookupError(f"the transfer table has no row for {place}, {stirring}")
+        return curve(setting, np.zeros((len(setting.impurities), len(setting.T), 1))), {}
     record = found.record
     z = normal(setting.draws, f"stirring:{stirring}")[0]
     ln_ref = np.log(record.fields["k_m_per_s"]) + record.spread * z
@@ -302,6 +347,17 @@ def exchange(
     if factor is not None:
         ln = ln + np.log(factor)
     return curve(setting, ln), records
+
+
+def exchange_gaps(setting: Setting, place: str) -> dict[str, tuple[Gap, ...]]:
+    """Return what is missing for :func:`exchange`: without a rate at a place no element is assessed."""
+    if not setting.liquid:
+        return {}
+    stirring = setting.choice.stirring or "quiescent"
+    found = setting.library.find("transfer", place=place, stirring=stirring)
+    gaps = for_all(setting.impurities, (found,)) if isinstance(found, Gap) else {}
+    missing = {e: d for e in setting.impurities if isinstance(d := diffusivity(setting, e), Gap)}
+    return together(gaps, {element: (gap,) for element, gap in missing.items()})
 
 
 def vapour_speed(T: Array | float, molar_mass: float) -> Array:

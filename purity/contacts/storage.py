@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.constants import P0, R
-from purity.contacts.setting import Exposed, Setting, carrier_of, flat, spread_factor
+from purity.contacts.setting import Exposed, Setting, carrier_of, flat, for_all, spread_factor
 from purity.database import Found, Gap, Record
 from purity.driving_force.pure import atoms, formation, gibbs_energy
 from purity.kinetics.exposure import Curve, Exposure, Film
@@ -94,7 +94,8 @@ def stored(
     by_element: dict[str, tuple[Found, ...]] = {}
     for element in setting.impurities:
         own = [found for film, found in films if film.nu[setting.impurities.index(element)]]
-        by_element[element] = (*own, *records, *(water if element in ("H", "O") else ()))
+        wet = (*water, *_water(setting)) if element in ("H", "O") else ()
+        by_element[element] = (*own, *records, *wet) if own or wet else ()
     names = {c.name: records for c in carriers}
     rate = Curve(setting.T[:1], np.zeros((len(setting.impurities), 1, 1)))
     exposure = Exposure(contact.name, area, rate, carriers, (), tuple(film for film, _ in films))
@@ -151,9 +152,25 @@ def relative_humidity(setting: Setting, water: Array) -> Array:
     liquid = gibbs_energy(setting.library, "H2O", "liquid", T, setting.draws.nominal())
     gas = gibbs_energy(setting.library, "H2O", "gas", T, setting.draws.nominal())
     if isinstance(liquid, Gap) or isinstance(gas, Gap):
-        raise LookupError("the Gibbs table has no water")
+        return np.ones_like(water)
     saturated = float(P0 * np.exp((liquid.value - gas.value) / (R * T)).ravel()[0])
     return np.asarray(np.minimum(1.0, water / saturated))
+
+
+def water_gaps(setting: Setting) -> dict[str, tuple[Gap, ...]]:
+    """Return what is missing to say how much water stands on stored metal."""
+    made = [gibbs_energy(setting.library, "H2O", state, 298.15, setting.draws) for state in ("liquid", "gas")]
+    gaps = [one for one in made if isinstance(one, Gap)]
+    row = setting.library.find("surfaces", host="*", surface="etched", species="H2O")
+    gaps += [row] if isinstance(row, Gap) else []
+    return for_all(("H", "O"), tuple(gaps))
+
+
+def _water(setting: Setting) -> tuple[Found, ...]:
+    """Records of the pressure over liquid water."""
+    T = float(setting.T[0])
+    made = [gibbs_energy(setting.library, "H2O", state, T, setting.draws) for state in ("liquid", "gas")]
+    return tuple(f for one in made if not isinstance(one, Gap) for f in one.found)
 
 
 def _like(environment: str) -> tuple[str, ...]:

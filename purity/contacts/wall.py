@@ -11,10 +11,11 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.constants import GRAVITY, P0
+from purity.constants import ATM, GRAVITY, P0
 from purity.contacts.setting import (
     Exposed,
     Setting,
+    behind,
     carrier,
     exchange,
     flat,
@@ -25,7 +26,7 @@ from purity.database import Found, Gap
 from purity.draws import normal
 from purity.driving_force.pure import atoms
 from purity.kinetics.exposure import Carrier, Exposure
-from purity.scenario import Contact, Given, Material
+from purity.scenario import Atmosphere, Contact, Given, Material
 
 Array = NDArray[np.float64]
 
@@ -35,6 +36,9 @@ OPEN = 1.0e3
 #: Effective pressure of CO at a carbon wall, Pa: bubbles need the gas above, the metal head and the
 #: curvature of the pore; pores that vent hold less. From memory (vacuum melting practice).
 CO_VENTED = (200.0, 1500.0)
+#: Pressure below which a vacuum is taken to strip the oxide film that keeps a melt from wetting its wall, Pa:
+#: from memory (sessile drops of aluminium); the cautious side, for a stripped wall exchanges in full.
+STRIPPED = 1e-2
 
 
 def wall(contact: Contact, setting: Setting) -> Exposed:
@@ -101,9 +105,6 @@ def wall(contact: Contact, setting: Setting) -> Exposed:
     opening, gate = wetting(setting, material)
     rate, element_records = exchange(setting, "wall", opening)
     element_records = {element: (*found, *gate) for element, found in element_records.items()}
-    for quantity, element in _withdrawn(setting, material):
-        gap = Gap(quantity, "this content has been withdrawn by your own table")
-        gaps[element] = (*gaps.get(element, ()), gap)
     exposure = Exposure(contact.name, area, rate, tuple(carriers))
     return Exposed(exposure, None, records, element_records, tuple(inputs), gaps)
 
@@ -112,7 +113,8 @@ def wetting(setting: Setting, material: Material) -> tuple[Array, tuple[Found, .
     """Return the share of the exchange that an unwetted wall leaves open, (K, N), and its record.
 
     Below the gate temperature of the host and the wall's main compound only the points of contact
-    exchange; a pair without a record counts as wetted, which is the cautious side.
+    exchange; a pair without a record counts as wetted, which is the cautious side. A high vacuum strips
+    the film that keeps some metals from wetting, and much oxygen lets a metal wet oxides.
     """
     one = np.ones((len(setting.T), 1))
     if not setting.liquid or not material.phases:
@@ -125,7 +127,18 @@ def wetting(setting: Setting, material: Material) -> tuple[Array, tuple[Found, .
     z = normal(setting.draws, record.quantity)[0]
     share = np.minimum(1.0, record.fields["factor"] * np.exp(record.spread * z))
     wets = setting.T[:, np.newaxis] >= record.fields["T_gate_K"]
+    if record.words["held_by"] == "film" and _pressure(setting) < STRIPPED:
+        wets = np.ones_like(wets)
+    oxygen, certified = record.fields.get("wets_from_O_ppm"), setting.lot.certificate.get("O")
+    if oxygen is not None and certified is not None:
+        wets = wets | (setting.sample(certified.given) >= 1e-6 * oxygen)
     return np.where(wets, 1.0, share), (found,)
+
+
+def _pressure(setting: Setting) -> float:
+    """Pressure above the melt as given, Pa; an atmosphere where no gas is named."""
+    gas = next((c.body for c in setting.choice.contacts if c.role == "gas"), None)
+    return gas.pressure.median if isinstance(gas, Atmosphere) else ATM
 
 
 def _phases(material: Material, setting: Setting) -> list[str]:
@@ -152,14 +165,14 @@ def _traces(
     total = np.sum(np.stack(np.broadcast_arrays(*moles.values())), axis=0)
     depth, depth_found = _wall_value(setting, material, "leach_depth", material.leach_depth)
     density, density_found = _wall_value(setting, material, "density", None)
+    # the share of one trace hangs on the contents of all
+    found = (*behind(setting, *material.traces.values()), *depth_found, *density_found)
     rows: list[tuple[str, Array, Array, tuple[Found, ...], tuple[Given, ...]]] = []
     for formula, given in material.traces.items():
         if stoichiometry(setting, formula) is None or set(atoms(formula)) == {setting.host}:
             continue
         activity = np.minimum(1.0, moles[formula] / total)
         inventory = moles[formula] * depth * density * area
-        own = tuple(Found(record) for record in setting.library.rivals(given.key)[:1])
-        found = (*own, *depth_found, *density_found)
         rows.append((formula, activity, inventory, found, (given,)))
     return rows
 
@@ -173,7 +186,7 @@ def _wall_value(
     if given is not None:
         return setting.sample(given), () if isinstance(found, Gap) else (found,)
     if isinstance(found, Gap):
-        raise LookupError(f"the table of wall values has no general row for {name}")
+        return np.zeros(1), ()
     return found.record.fields["value_SI"] * spread_factor(setting, found.record), (found,)
 
 
@@ -191,16 +204,6 @@ def _molar_mass(setting: Setting, formula: str) -> float:
             known = row.record.fields["molar_mass_g_per_mol"] / 1000.0
         total += count * known
     return total
-
-
-def _withdrawn(setting: Setting, material: Material) -> list[tuple[str, str]]:
-    prefix = f"traces:{_row_name(material)}/"
-    return [
-        (quantity, element)
-        for quantity in setting.library.withdrawn
-        if quantity.startswith(prefix)
-        for element in set(atoms(quantity.removeprefix(prefix))) - {setting.host}
-    ]
 
 
 def head(depth: float, density: float) -> float:
