@@ -38,7 +38,7 @@ PLAIN: Mapping[str, Mapping[str, Bounds]] = {
     "solubility": {"T_K": (200.0, 4000.0), "limit_ppm_mass": (0.05, 5e5)},
     "containers": {"mass_fraction": (5e-3, 1.0)},
     "traces": {"content_ppm_mass": (5e-3, 1e5)},
-    "wetting": {"factor": (2e-4, 1.0)},
+    "wetting": {"factor": (2e-4, 1.0), "wets_from_O_ppm": (10.0, 5e4)},
     "attack": {"rate_m_per_s": (1e-11, 1e-4), "T_K": (250.0, 4000.0)},
     "atmospheres": {"fraction_ppm_mol": (0.0, 1e6)},
     "surfaces": {"amount_mg_per_m2": (1e-3, 1e3)},

@@ -24,7 +24,7 @@ from purity.draws import normal
 from purity.driving_force.pure import atoms
 from purity.driving_force.substances import ln_dissolution
 from purity.followers import Part
-from purity.kinetics.advance import State
+from purity.kinetics.advance import HELD_BACK_BY, State
 from purity.kinetics.exposure import Curve, Exposure, at
 from purity.scenario import Contact, Furnace, Given, Material
 
@@ -57,6 +57,8 @@ class Done:
     attacked : (N,) bool array
     attack : (N,) array or None
         Depth of wall lost, m.
+    shares : (L, I) array
+        Shares of HELD_BACK_BY.
     records : mapping of element to records
     notes : tuple of str
     """
@@ -64,6 +66,7 @@ class Done:
     after: State
     ledger: Array
     attacked: NDArray[np.bool_]
+    shares: Array
     attack: Array | None = None
     records: Records = field(default_factory=dict)
     notes: tuple[str, ...] = ()
@@ -155,7 +158,7 @@ def _eaten(done: Done, entered: State, setting: Setting) -> Done:
     """Replace what eaten walls give by their measured rate of loss, where one is known for all of them."""
     if not setting.liquid or done.attacked.mean() <= EATEN:
         return done
-    walls = [(c, one) for c, one in enumerate(setting.choice.contacts) if isinstance(one.body, Material)]
+    walls = [(c, one) for c, one in enumerate(setting.choice.contacts) if one.role in ("wall", "mould")]
     rates = [(c, one, known) for c, one in walls if (known := _rate_of_loss(setting, one)) is not None]
     if not rates:
         return done
@@ -181,7 +184,7 @@ def _eaten(done: Done, entered: State, setting: Setting) -> Done:
         celsius = fields["T_K"] - 273.15
         notes = (*notes, f"{contact.name} is eaten: wall loss taken as measured at {celsius:.0f} degC")
     after = replace(done.after, x=x, suspended=suspended)
-    return Done(after, ledger, np.zeros_like(done.attacked), deepest, records, notes)
+    return Done(after, ledger, np.zeros_like(done.attacked), done.shares, deepest, records, notes)
 
 
 def _rate_of_loss(setting: Setting, contact: Contact) -> tuple[str, Found] | None:
@@ -229,8 +232,23 @@ def _vented(done: Done, setting: Setting, exposed: Sequence[Exposed]) -> Done:
     for element, found in (("H", used), ("O", grew)):
         if element in setting.impurities:
             records[element] = (*records.get(element, ()), *found)
-    after = replace(after, x=after.x + gained, surface=surface)
-    return replace(done, after=after, ledger=ledger, records=records, notes=(*done.notes, *notes, *said))
+    return replace(
+        done,
+        after=replace(after, x=after.x + gained, surface=surface),
+        ledger=ledger,
+        shares=_by_film(done.shares, ledger, film),
+        records=records,
+        notes=(*done.notes, *notes, *said),
+    )
+
+
+def _by_film(shares: Array, ledger: Array, film: Array) -> Array:
+    """Share what holds the pickup back between the growth of the film and the rest."""
+    moved = np.abs(ledger).sum(axis=0)
+    part = np.median(np.abs(film) / np.maximum(moved, np.finfo(float).tiny), axis=-1)
+    shared = shares * (1.0 - part)
+    shared[HELD_BACK_BY.index("film growth")] += part
+    return np.asarray(shared)
 
 
 def _hydrogen(setting: Setting) -> tuple[Array, tuple[Found, ...], tuple[str, ...]]:

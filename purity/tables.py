@@ -142,7 +142,13 @@ TABLES: Mapping[str, Table] = {
         ("material", "property"), ("value_SI",), spread="spread_factor"
     ),  # leach_depth (m), open_porosity (1), service_oxidising, service_inert, service_vacuum (K)
     # gate: metal-side exchange times `factor` below T_gate where the melt does not wet the wall
-    "wetting": Table(("host", "formula"), ("T_gate_K", "factor"), spread="spread_ln", text=("wets",)),
+    "wetting": Table(
+        ("host", "formula"),
+        ("T_gate_K", "factor", "wets_from_O_ppm"),
+        spread="spread_ln",
+        text=("wets", "held_by"),
+        optional=("wets_from_O_ppm",),
+    ),
     # rate of wall loss into the melt where no ceiling lies in the dilute range
     "attack": Table(("host", "formula"), ("rate_m_per_s", "T_K"), spread="spread_ln"),
     "atmospheres": Table(

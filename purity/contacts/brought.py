@@ -55,7 +55,7 @@ def charge(contact: Contact, setting: Setting) -> Exposed:
             if film.nu[j]:
                 amounts[element] = amounts.get(element, np.zeros(1)) + film.nu[j] * thickness * area
                 records[element] = (*records.get(element, ()), found)
-    return _brought(contact, setting, amounts, records, (body.days_in_air,))
+    return brought(contact, setting, amounts, records, (body.days_in_air,))
 
 
 def dust(contact: Contact, setting: Setting) -> Exposed:
@@ -68,7 +68,7 @@ def dust(contact: Contact, setting: Setting) -> Exposed:
         for element, share in body.contents.items()
         if element in setting.impurities
     }
-    return _brought(contact, setting, amounts, {}, (body.rate, contact.area, *body.contents.values()))
+    return brought(contact, setting, amounts, {}, (body.rate, contact.area, *body.contents.values()))
 
 
 def residue(contact: Contact, setting: Setting) -> Exposed:
@@ -81,16 +81,17 @@ def residue(contact: Contact, setting: Setting) -> Exposed:
         for element, amount in body.amounts.items()
         if element in setting.impurities
     }
-    return _brought(contact, setting, amounts, {}, (contact.area, *body.amounts.values()))
+    return brought(contact, setting, amounts, {}, (contact.area, *body.amounts.values()))
 
 
-def _brought(
+def brought(
     contact: Contact,
     setting: Setting,
     amounts: Mapping[str, Array],
     records: Mapping[str, tuple[Found, ...]],
     inputs: tuple[Given, ...],
 ) -> Exposed:
+    """Return a contact that brings amounts (mol, (N,)) by element at the start of the step, and no more."""
     zero = np.zeros(np.broadcast_shapes(setting.amount.shape, *(a.shape for a in amounts.values())))
     gain = np.stack(
         [np.broadcast_to(amounts.get(e, zero), zero.shape) / setting.amount for e in setting.impurities]
@@ -118,4 +119,4 @@ def _elements(setting: Setting, species: str, mass: Array) -> dict[str, Array]:
     }
 
 
-__all__ = ["charge", "dust", "residue"]
+__all__ = ["brought", "charge", "dust", "residue"]
