@@ -131,8 +131,8 @@ def _without_still(
 def _leaders(plan: Plan, count: int) -> tuple[Plan, list[Index], dict[int, list[tuple[int, Carrier]]]]:
     """Return what leads, its groups, and by following element its traces with the contact they sit in.
 
-    Elements that a wall or a gas ties to others lead; one that only traces hold, or nothing but itself,
-    follows.
+    Elements that a gas ties to others lead, and those of a wall that no more than one follower tells from
+    them; one that only traces hold, or nothing but itself, follows.
     """
     bare = [
         replace(e, carriers=tuple(c for c in e.carriers if not may_follow(c) or c.name in plan.heavy))
@@ -140,6 +140,9 @@ def _leaders(plan: Plan, count: int) -> tuple[Plan, list[Index], dict[int, list[
     ]
     skins = [skin for skin, _ in plan.skins.values()]
     lead = {int(i) for group in tied(bare, skins, count) if len(group) > 1 for i in group}
+    for carrier in (c for e in plan.exposures for c in e.carriers if may_follow(c) and c.inventory is None):
+        if follower(carrier, lead) is None:
+            lead |= set(np.flatnonzero(carrier.nu).tolist())
     traces: dict[int, list[tuple[int, Carrier]]] = {}
     kept = []
     for c, exposure in enumerate(plan.exposures):
