@@ -33,7 +33,7 @@ VALUE = {
 
 
 def shifted(record: Record) -> Record:
-    """Return a row moved by one standard deviation: down where up would pass a bound of its table."""
+    """Return a row moved by one standard deviation: down where up would pass a bound."""
     if record.table == "priors":
         fields = {name: 1.5 * value for name, value in record.fields.items()}
         return replace(record, fields=fields)
@@ -47,8 +47,11 @@ def shifted(record: Record) -> Record:
         spread /= log(10.0)
     if record.table == "hosts":
         factor = 1.0 + record.spread
-    if (record.table == "atmospheres" and value * factor > 1e5) or record.table in ("sticking", "wetting"):
+    if record.table in ("sticking", "wetting", "diffusion"):
         factor = 1.0 / factor
+    if record.table == "atmospheres" and value > 1e4:
+        # the species of a gas add up to one, within what the tables allow
+        factor = 0.97
     moved = value + spread if how == "plus" else value * factor
     return replace(record, fields={**record.fields, name: moved})
 

@@ -57,7 +57,9 @@ def accounted(made: Exposed, contact: Contact, setting: Setting) -> Exposed:
     made = replace(made, gaps=together(made.gaps, gaps))
     if not isinstance(contact.body, Atmosphere | Package):
         return made
-    return _with_records(made, behind(setting, *made.inputs))
+    felt = {"O2", "H2O", *(carrier.name for carrier in made.exposure.carriers)}
+    records = behind(setting, *made.inputs)
+    return _with_records(made, tuple(f for f in records if f.record.words.get("species", "O2") in felt))
 
 
 def _with_records(made: Exposed, records: tuple[Found, ...]) -> Exposed:
