@@ -11,7 +11,6 @@ from concurrent.futures import Executor
 from dataclasses import dataclass
 from difflib import get_close_matches
 from functools import partial
-from itertools import product
 
 import numpy as np
 from numpy.typing import NDArray
@@ -31,7 +30,7 @@ from purity.passing import Passed, pass_step
 from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StateWord, StepResult
 from purity.risk import Standing, load, standings
 from purity.risk import state as standing_state
-from purity.scenario import Choice, Given, Lot, Material, Scenario, scenario_hash
+from purity.scenario import Choice, Given, Lot, Material, Scenario, Step, scenario_hash
 from purity.uncertainty import assumed_share, band, drivers
 
 Array = NDArray[np.float64]
@@ -61,7 +60,7 @@ def assess(
     library : Library
     draws : Draws
     executor : concurrent.futures.Executor, optional
-        Runs the choices of a step side by side; the result does not depend on it.
+        Runs choices and routes side by side; the result does not depend on it.
     history : bool
         Keep contents over time.
     route : sequence of str, optional
@@ -95,7 +94,7 @@ def assess(
             walked[(*taken, one.choice.name)] = one
         steps.append(_step_result(step.name, step.process, taken, passed, scenario, library, draws))
         taken = (*taken, _next(steps[-1], route, number, scenario))
-    routes = _routes(scenario, run, (start, known), walked, draws)
+    routes = _routes(scenario, run, walked, draws, executor)
     gaps = tuple(
         dict.fromkeys(gap_text(g) for one in walked.values() for found in one.gaps.values() for g in found)
     )
@@ -367,49 +366,70 @@ def _facts(scenario: Scenario, walked: Iterable[Passed]) -> ScenarioFacts:
     )
 
 
+@dataclass(frozen=True, slots=True)
+class _End:
+    """End of a route: its choices, whether all of it could be assessed, weight of its last step."""
+
+    path: tuple[str, ...]
+    state: StateWord
+    weighed: _Weighed
+
+
 def _routes(
     scenario: Scenario,
     run: Callable[..., Passed],
-    start: tuple[State, Came],
-    walked: dict[tuple[str, ...], Passed],
+    walked: Mapping[tuple[str, ...], Passed],
     draws: Draws,
+    executor: Executor | None,
 ) -> tuple[RouteResult, ...]:
     """Every route, best first; each prefix is run once and shared by the routes that begin with it."""
     runs = int(np.sum(np.cumprod([len(step.choices) for step in scenario.steps])))
     if len(scenario.steps) < 2 or runs > MOST_RUNS:
         return ()
-    lot = scenario.lot
-    paths = list(product(*([choice.name for choice in step.choices] for step in scenario.steps)))
-    by_name = [{choice.name: choice for choice in step.choices} for step in scenario.steps]
-    ends = []
-    for path in paths:
-        before, came = start
-        for depth in range(len(path)):
-            prefix = path[: depth + 1]
-            if prefix not in walked:
-                walked[prefix] = run(before, by_name[depth][path[depth]], came=came)
-            before, came = walked[prefix].after, walked[prefix].behind
-        ends.append([walked[path[: depth + 1]] for depth in range(len(path))])
-    states = [_route_state(legs, lot) for legs in ends]
-    weighed = [_weigh(legs[-1], lot) for legs in ends]
+    names = [choice.name for choice in scenario.steps[0].choices]
+    known = [{path: one for path, one in walked.items() if path[0] == name} for name in names]
+    walk = partial(_ends, run, scenario.steps[1:], scenario.lot)
+    heads = [(walked[(name,)],) for name in names]
+    branches = map(walk, known, heads) if executor is None else executor.map(walk, known, heads)
+    ends = [end for branch in branches for end in branch]
     ranks = standings(
-        states,
-        [w.over for w in weighed],
-        [w.loads for w in weighed],
+        [end.state for end in ends],
+        [end.weighed.over for end in ends],
+        [end.weighed.loads for end in ends],
         max(draws.blocks, 1),
     )
     results = [
         RouteResult(
-            path,
+            end.path,
             r.chance_over,
             r.chance_error,
-            None if r.deciding is None else w.names[r.deciding],
+            None if r.deciding is None else end.weighed.names[r.deciding],
             r.rank,
-            None if s == "ranked" else s,
+            None if end.state == "ranked" else end.state,
         )
-        for path, r, w, s in zip(paths, ranks, weighed, states, strict=True)
+        for end, r in zip(ends, ranks, strict=True)
     ]
     return tuple(sorted(results, key=lambda r: (r.rank is None, r.rank or 0)))
+
+
+def _ends(
+    run: Callable[..., Passed],
+    steps: Sequence[Step],
+    lot: Lot,
+    known: Mapping[tuple[str, ...], Passed],
+    legs: tuple[Passed, ...],
+) -> list[_End]:
+    """Walk every route that begins with these legs; `known` holds those that have been walked."""
+    path = tuple(leg.choice.name for leg in legs)
+    if not steps:
+        return [_End(path, _route_state(legs, lot), _weigh(legs[-1], lot))]
+    ends: list[_End] = []
+    for choice in steps[0].choices:
+        next_leg = known.get((*path, choice.name))
+        if next_leg is None:
+            next_leg = run(legs[-1].after, choice, came=legs[-1].behind)
+        ends += _ends(run, steps[1:], lot, known, (*legs, next_leg))
+    return ends
 
 
 def _route_state(legs: Sequence[Passed], lot: Lot) -> StateWord:

@@ -26,6 +26,8 @@ Index = NDArray[np.int64]
 
 #: Steps a segment in the main job.
 NODES = 16
+#: The same in a cast: seconds to minutes, far from rest.
+NODES_CAST = 4
 #: ln that stands for no limit: exp of it and of its negative are finite.
 NO_LIMIT = 300.0
 
@@ -34,6 +36,11 @@ def total(state: State) -> Array:
     """Return the whole content, dissolved, suspended and at the surface, (I, N) mol per mol of host."""
     x = state.x + state.suspended
     return x if state.surface is None else x + state.surface
+
+
+def nodes_of(setting: Setting) -> int:
+    """Return the number of steps a segment."""
+    return NODES_CAST if setting.choice.process == "cast" else NODES
 
 
 @dataclass(frozen=True, slots=True)
@@ -163,8 +170,9 @@ def move_followers(
     rows, channels = _channels(ways, exposures, setting, n)
     cap = _cap(ways, setting, n)
     whole = total(State(entered.x[index], entered.suspended[index]))
-    done = follow_along(whole, channels, cap, schedule, nodes=NODES, history=history)
-    half = follow_along(whole, channels, cap, schedule, nodes=NODES // 2)
+    nodes = nodes_of(setting)
+    done = follow_along(whole, channels, cap, schedule, nodes=nodes, history=history)
+    half = follow_along(whole, channels, cap, schedule, nodes=nodes // 2)
     size = np.maximum(done.total, 1e-2 * np.maximum(whole, 1e-12))
     error = np.quantile(np.abs(done.total - half.total) / (3.0 * size), 0.95, axis=-1)
     parts = [_part(f, way, rows, done, float(error[f]), exposures, channels) for f, way in enumerate(ways)]

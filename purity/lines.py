@@ -145,7 +145,7 @@ def worst_class(records: Iterable[Found]) -> str | None:
 
 
 def _worst(passed: Passed, i: int, scale: float) -> float | None:
-    """95 % point of the content at the worst position: what is dissolved parts, what is suspended does not."""
+    """95 % point of the content at the worst position: what is dissolved parts, the suspended stays."""
     factor = passed.worst.get(passed.impurities[i])
     if factor is None:
         return None

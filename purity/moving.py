@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +18,7 @@ from numpy.typing import NDArray
 from purity.contacts import products
 from purity.contacts.setting import Exposed, Setting, diffusivity
 from purity.database import Found, Gap
-from purity.followers import NODES, Course, Part, move_followers, total, ways_of
+from purity.followers import NODES, Course, Part, move_followers, nodes_of, total, ways_of
 from purity.kinetics.advance import Host, State, advance
 from purity.kinetics.exposure import Carrier, Curve, Exposure, Skin
 from purity.kinetics.groups import follower, heavy, idle, may_follow, restrict, spare, tied, ties, turnover
@@ -38,6 +39,8 @@ RARE = 0.05
 BEYOND = 1e-6
 #: Most rounds in which compounds and sinks that turn out to matter are added.
 ROUNDS = 5
+#: Error of the time steps from which a short step is done again with as many as a long one.
+ROUGH = 0.02
 
 
 @dataclass(frozen=True, slots=True)
@@ -187,16 +190,19 @@ def _advance(
     diffusivity = None if setting.liquid else _diffusivity(setting, index)
     host = Host("liquid" if setting.liquid else "solid", setting.molar_density, setting.amount, diffusivity)
     taken = {name: setting.sample(share) for name, share in setting.choice.removal.items()}
-    pickup = advance(
+    run = partial(
+        advance,
         state,
         host,
         setting.choice.form,
         schedule,
         sub,
         history=history,
-        nodes=NODES,
         removal=taken if taken and setting.liquid else None,
     )
+    pickup = run(nodes=nodes_of(setting))
+    if pickup.error > ROUGH and nodes_of(setting) < NODES:
+        pickup = run(nodes=NODES)
     names = tuple(dict.fromkeys(carrier.name for one in sub for carrier in one.carriers))
     return Part(index, tuple(rows), pickup, tuple(own.values()), (), names)
 

@@ -27,6 +27,7 @@ from purity.contacts.wall import wall
 from purity.database import Found, Gap, phase_at
 from purity.draws import normal
 from purity.driving_force.pure import atoms
+from purity.errors import MissingRecordError
 from purity.kinetics.casting import chvorinov_time, partition, worst_position
 from purity.kinetics.schedule import Schedule, T_at
 from purity.scenario import Contact, Given, Material
@@ -80,7 +81,8 @@ def freezing(setting: Setting) -> Freezing:
     stream, mould = _contact(setting, "gas"), _contact(setting, "mould")
     pour, zero = _drawn(setting, stream, "pour_time"), np.zeros(1)
     given, crop = _drawn(setting, mould, "freezing_time"), _drawn(setting, mould, "crop")
-    modulus, records = _modulus(setting, mould), ()
+    modulus = _modulus(setting, mould)
+    records: tuple[Found, ...] = ()
     notes: list[str] = []
     if pour is None:
         notes.append("the stream is left out: give pour = { time = ..., area = ... }")
@@ -137,9 +139,7 @@ def stream(contact: Contact, setting: Setting) -> Exposed:
     widened = replace(contact.area, low=contact.area.low * middle, high=contact.area.high * middle)
     one = gas(replace(contact, area=widened), setting)
     exposure = replace(one.exposure, area=whole)
-    return replace(
-        one, exposure=exposure, inputs=(*one.inputs, time, area), notes=(*one.notes, *run.notes)
-    )
+    return replace(one, exposure=exposure, inputs=(*one.inputs, time, area), notes=(*one.notes, *run.notes))
 
 
 def mould(contact: Contact, setting: Setting) -> Exposed:
@@ -262,14 +262,14 @@ def _row(setting: Setting, mould: Contact | None) -> Found:
         found = setting.library.find("moulds", material=material)
         if isinstance(found, Found):
             return found
-    raise LookupError("the table of moulds has no general row")
+    raise MissingRecordError("moulds:*", "how a mould takes heat")
 
 
 def _chvorinov(setting: Setting, mould: Contact | None, modulus: Array) -> tuple[Array, tuple[Found, ...]]:
     row = _row(setting, mould)
     fusion = setting.library.find("transitions", element=setting.host, kind="melting", to_state="liquid")
     if isinstance(fusion, Gap):
-        raise LookupError(f"the table of transitions has no melting point of {setting.host}")
+        raise MissingRecordError(fusion.quantity, f"heat of fusion of {setting.host}")
     melting = fusion.record.fields["T_K"]
     above = max(float(np.max(setting.T)) - melting, 0.0)
     heat = setting.molar_density * (fusion.record.fields["dH_J_per_mol"] + HEAT_CAPACITY * above)
