@@ -6,6 +6,7 @@ from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
 
+from purity.contacts.ceilings import counted
 from purity.contacts.parcel import Parcel
 from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap
@@ -65,24 +66,23 @@ def moved_by(
 def seen_in(
     setting: Setting, exposed: Sequence[Exposed], parcels: Iterable[Parcel], moved: Behind
 ) -> dict[str, tuple[Found, ...]]:
-    """Return what stands behind all that is said of each element: its contents and its ceilings."""
+    """Return what stands behind all that is said of each element: its contents and its ceilings.
+
+    A ceiling hangs on the contents of the other elements of its compound.
+    """
     seen = {element: dict(found) for element, found in moved.items()}
-    for one in exposed:
-        for carrier in one.exposure.carriers:
-            members = [setting.impurities[int(i)] for i in np.flatnonzero(carrier.nu)]
-            own = _named(one.carrier_records.get(carrier.name, ()))
-            _share(seen, members, own, moved)
+    for i, element in enumerate(setting.impurities):
+        for one in exposed:
+            for carrier in counted(one, i):
+                seen[element] |= _named(one.carrier_records.get(carrier.name, ()))
+                for j in np.flatnonzero(carrier.nu):
+                    seen[element] |= moved[setting.impurities[int(j)]]
     for parcel in parcels:
-        _share(seen, list(parcel.ln_ceiling), _named(parcel.found), moved)
+        for element in parcel.ln_ceiling:
+            seen[element] |= _named(parcel.found)
+            for other in parcel.ln_ceiling:
+                seen[element] |= moved[other]
     return {element: tuple(found.values()) for element, found in seen.items()}
-
-
-def _share(seen: Behind, members: Sequence[str], own: Mapping[str, Found], moved: Behind) -> None:
-    """A ceiling hangs on the contents of the other elements of its compound."""
-    for element in members:
-        seen[element] |= own
-        for other in members:
-            seen[element] |= moved[other]
 
 
 def _entered(setting: Setting, exposed: Sequence[Exposed], came: Mapping[str, tuple[Found, ...]]) -> Behind:

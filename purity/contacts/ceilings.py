@@ -52,6 +52,14 @@ def ceiling(exposed: Exposed, setting: Setting, x: Array, T: Array, element: int
     return np.asarray(np.max(np.stack([np.broadcast_to(e, (n,)) for e in ends]), axis=0))
 
 
+def counted(exposed: Exposed, element: int) -> list[Carrier]:
+    """Return the carriers that the ceiling of an element against a contact hangs on."""
+    mine = [c for c in exposed.exposure.carriers if c.nu[element] > 0]
+    held = [c for c in mine if c.conductance is None and _gives(c)]
+    open_side = [c for c in mine if c.conductance is not None]
+    return [*held, *(open_side if any(_gives(c) for c in open_side) else ())]
+
+
 def _gives(carrier: Carrier) -> bool:
     activity = carrier.activity
     some = bool(np.any(np.asarray(activity.ln if isinstance(activity, Curve) else activity) != 0.0))
