@@ -388,7 +388,7 @@ def _routes(
         return ()
     names = [choice.name for choice in scenario.steps[0].choices]
     known = [{path: one for path, one in walked.items() if path[0] == name} for name in names]
-    walk = partial(_ends, run, scenario.steps[1:], scenario.lot)
+    walk = partial(_ends, partial(run, explain=False), scenario.steps[1:], scenario.lot)
     heads = [(walked[(name,)],) for name in names]
     branches = map(walk, known, heads) if executor is None else executor.map(walk, known, heads)
     ends = [end for branch in branches for end in branch]

@@ -155,6 +155,7 @@ def move_followers(
     schedule: Schedule,
     entered: State,
     history: bool,
+    explain: bool = True,
 ) -> list[Part]:
     """Move all linear followers at once.
 
@@ -175,7 +176,7 @@ def move_followers(
     half = follow_along(whole, channels, cap, schedule, nodes=nodes // 2)
     size = np.maximum(done.total, 1e-2 * np.maximum(whole, 1e-12))
     error = np.quantile(np.abs(done.total - half.total) / (3.0 * size), 0.95, axis=-1)
-    parts = [_part(f, way, rows, done, float(error[f]), exposures, channels) for f, way in enumerate(ways)]
+    parts = [_part(f, way, rows, done, float(error[f]), explain) for f, way in enumerate(ways)]
     return [_skimmed(part, setting) for part in parts]
 
 
@@ -260,8 +261,7 @@ def _part(
     rows: Sequence[int],
     done: Followed,
     error: float,
-    exposures: Sequence[Exposure],
-    channels: Sequence[Channel],
+    explain: bool,
 ) -> Part:
     n = done.total.shape[-1]
     contacts = tuple(dict.fromkeys(c for c, _ in way.carriers))
@@ -277,7 +277,7 @@ def _part(
         ledger,
         None,
         None,
-        _shares(f, way, rows, done)[:, np.newaxis, np.newaxis],
+        _shares(f, way, rows if explain else (), done)[:, np.newaxis, np.newaxis],
         error,
         np.zeros(n, dtype=bool),
         np.zeros(n, dtype=bool),

@@ -53,7 +53,13 @@ class Plan:
 
 
 def move(
-    entered: State, setting: Setting, schedule: Schedule, exposed: Sequence[Exposed], history: bool
+    entered: State,
+    setting: Setting,
+    schedule: Schedule,
+    exposed: Sequence[Exposed],
+    history: bool,
+    *,
+    explain: bool = True,
 ) -> list[Part]:
     """Lead with what is tied together, then let the others follow; add what turns out to matter.
 
@@ -65,6 +71,8 @@ def move(
     schedule : Schedule
     exposed : sequence of Exposed
     history : bool
+    explain : bool
+        Find what holds each pickup back.
 
     Returns
     -------
@@ -81,7 +89,7 @@ def move(
     leading: list[Part] = []
     for _ in range(ROUNDS):
         lead, groups, traces = _leaders(plan, len(setting.impurities))
-        leading = [_advance(entered, setting, schedule, lead, index, history) for index in groups]
+        leading = [_advance(entered, setting, schedule, lead, index, history, explain) for index in groups]
         x = _collect(entered.x, leading)
         grown = _grown(plan, whole, groups, traces, entered, setting, schedule, seen, x)
         if grown is None:
@@ -92,9 +100,12 @@ def move(
     alone = [way for way in ways if not way.linear]
     return [
         *leading,
-        *(_advance(entered, setting, schedule, plan, np.array([way.element]), history) for way in alone),
+        *(
+            _advance(entered, setting, schedule, plan, np.array([way.element]), history, explain)
+            for way in alone
+        ),
         *move_followers(
-            [way for way in ways if way.linear], plan.exposures, setting, schedule, entered, history
+            [way for way in ways if way.linear], plan.exposures, setting, schedule, entered, history, explain
         ),
     ]
 
@@ -168,6 +179,7 @@ def _advance(
     plan: Plan,
     index: Index,
     history: bool,
+    explain: bool = True,
 ) -> Part:
     """Move one group of tied elements."""
     rows, sub = [], []
@@ -199,6 +211,7 @@ def _advance(
         sub,
         history=history,
         removal=taken if taken and setting.liquid else None,
+        explain=explain,
     )
     pickup = run(nodes=nodes_of(setting))
     if pickup.error > ROUGH and nodes_of(setting) < NODES:

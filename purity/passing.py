@@ -163,6 +163,7 @@ def pass_step(
     came: Mapping[str, tuple[Found, ...]] | None = None,
     exclude: tuple[str, ...] = (),
     history: bool = False,
+    explain: bool = True,
 ) -> Passed:
     """Move a lot through one choice.
 
@@ -183,6 +184,9 @@ def pass_step(
     exclude : tuple of str
         Compounds that the user keeps from forming.
     history : bool
+    explain : bool
+        Find what holds each pickup back, where the walls lead and where in a casting impurities gather;
+        without, contents alone, the same in all else.
 
     Returns
     -------
@@ -199,11 +203,11 @@ def pass_step(
             ledger[c] += one.gain
     for c, taken in off.items():
         ledger[c] += taken
-    parts = move(entered, setting, schedule, exposed, history)
+    parts = move(entered, setting, schedule, exposed, history, explain=explain)
     removed(ledger, exposed, parts)
-    passed = _gather(state, entered, setting, schedule, exposed, ledger, parts, came or {})
+    passed = _gather(state, entered, setting, schedule, exposed, ledger, parts, came or {}, explain)
     done = _finished(passed, entered, said)
-    return _frozen(done) if choice.process == "cast" else done
+    return _frozen(done) if explain and choice.process == "cast" else done
 
 
 def _frozen(passed: Passed) -> Passed:
@@ -261,6 +265,7 @@ def _gather(
     ledger: Array,
     parts: Sequence[Part],
     came: Mapping[str, tuple[Found, ...]],
+    explain: bool,
 ) -> Passed:
     """Put the groups together again, with what is known of each element."""
     n, count = setting.draws.n, len(setting.impurities)
@@ -297,7 +302,7 @@ def _gather(
     loss, loss_records = _host_loss(setting, schedule, exposed)
     after, ledger = _enrich(after, ledger, setting, loss)
     hot = np.broadcast_to(schedule.T.max(axis=0), (n,))
-    parcels = _parcels(setting, after, hot)
+    parcels = _parcels(setting, after, hot) if explain else {}
     moved = moved_by(setting, exposed, parts, loss_records, came)
     return Passed(
         setting.choice,

@@ -136,6 +136,7 @@ def advance(
     nodes: int = 32,
     removal: Mapping[str, Array] | None = None,
     check: bool = True,
+    explain: bool = True,
 ) -> Pickup:
     """Move a lot through one step.
 
@@ -159,6 +160,8 @@ def advance(
     check : bool
         Estimate the error of a bath, redo what is wrong, and find what holds the pickup back. Without,
         `error` and `shares` are 0: for a first look at less than half the cost.
+    explain : bool
+        Find what holds the pickup of a bath back. Without, `shares` are 0 and all else is the same.
 
     Returns
     -------
@@ -170,7 +173,7 @@ def advance(
         A solid under carriers without a form.
     """
     if host.phase == "liquid":
-        return _bath(state, host, schedule, exposures, history, nodes, removal, check)
+        return _bath(state, host, schedule, exposures, history, nodes, removal, check, explain)
     return _solid(state, host, form, schedule, exposures, history)
 
 
@@ -183,6 +186,7 @@ def _bath(
     nodes: int,
     removal: Mapping[str, Array] | None,
     check: bool,
+    explain: bool,
 ) -> Pickup:
     start = state.x + state.suspended
     start = start if state.surface is None else start + state.surface
@@ -191,13 +195,14 @@ def _bath(
     shares = np.zeros((len(HELD_BACK_BY), *total.shape))
     if check:
         run = refined(case, nodes=nodes, history=history)
+    else:
+        path = integrate(case, nodes=nodes, history=history)
+        run = Refined(path, 0.0, ~path.solved)
+    if check and explain:
         sample = elasticity.sample(total.shape[-1])
         names, E, moves = elasticity.elasticities(case.take(sample))
         held_back = elasticity.shares(names, E, moves)
         shares = _by_limit(("ceiling", *names), held_back, sample, total.shape[-1])
-    else:
-        path = integrate(case, nodes=nodes, history=history)
-        run = Refined(path, 0.0, ~path.solved)
     return _after_bath(run, shares, exposures, removal)
 
 
