@@ -109,6 +109,7 @@ def follow_along(
     """
     start = total
     ledger = np.zeros((len(channels), *total.shape))
+    size = _stacked([channel.inventory for channel in channels], total.shape)
     rates = _Rates(
         np.zeros_like(ledger), np.zeros_like(ledger), np.zeros_like(ledger), np.full_like(total, np.inf)
     )
@@ -118,8 +119,9 @@ def follow_along(
         edges = fractions(part, hold=nodes, ramp=nodes)
         for low, high in pairwise(edges):
             if not part.hold or low == 0.0:
-                rates = _rates(channels, cap, part.T1 + 0.5 * (low + high) * (part.T2 - part.T1))
-            gained = _step(total, rates, (high - low) * part.duration, _left(channels, ledger))
+                rates = _rates(channels, cap, total.shape, part.T1 + 0.5 * (low + high) * (part.T2 - part.T1))
+            left = np.maximum(size - ledger, 0.0)
+            gained = _step(total, rates, (high - low) * part.duration, left)
             ledger += gained
             total = total + gained.sum(axis=0)
             times.append(part.start + high * part.duration)
@@ -127,7 +129,6 @@ def follow_along(
                 record.append(total)
     total = np.maximum(start + ledger.sum(axis=0), 0.0)
     x = np.minimum(total, rates.cap)
-    size = np.stack([np.broadcast_to(c.inventory, total.shape) for c in channels]) if channels else ledger
     return Followed(
         x,
         total,
@@ -148,20 +149,19 @@ class _Rates:
     cap: Array
 
 
-def _rates(channels: Sequence[Channel], cap: Curve, T: Array) -> _Rates:
+def _rates(channels: Sequence[Channel], cap: Curve, shape: tuple[int, ...], T: Array) -> _Rates:
     kappa, ceiling, share = [], [], []
     for channel in channels:
         metal, side = np.exp(ln_at(channel.metal, T)), np.exp(ln_at(channel.side, T))
         kappa.append(metal * (side / (metal + side)))
         share.append(side / (metal + side))
         ceiling.append(np.exp(ln_at(channel.ceiling, T)))
-    return _Rates(np.stack(kappa), np.stack(ceiling), np.stack(share), np.exp(ln_at(cap, T)))
+    return _Rates(*(_stacked(rows, shape) for rows in (kappa, ceiling, share)), np.exp(ln_at(cap, T)))
 
 
-def _left(channels: Sequence[Channel], ledger: Array) -> Array:
-    return np.stack(
-        [np.maximum(c.inventory - gained, 0.0) for c, gained in zip(channels, ledger, strict=True)]
-    )
+def _stacked(rows: Sequence[Array], shape: tuple[int, ...]) -> Array:
+    """One row a channel, (C, F, N); none where nothing touches the metal."""
+    return np.stack([np.broadcast_to(row, shape) for row in rows]) if rows else np.zeros((0, *shape))
 
 
 def _step(total: Array, rates: _Rates, dt: Array, left: Array) -> Array:
