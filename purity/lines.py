@@ -132,7 +132,7 @@ def line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         forms=_forms(passed, element),
         records=tuple(sorted(found.record.quantity for found in records)),
         quality=worst_class(records),
-        extrapolated=any(_extrapolated(found, passed) for found in records),
+        extrapolated=any(_extrapolated(found, passed) for found in passed.own.get(element, ())),
         gap=gap or (None if column.certified else "not certified: the end is not known"),
         series=_series(passed, element, scale),
         start_method=None if certified is None else certified.method,
@@ -302,6 +302,6 @@ def group_line(passed: Passed, column: Column, lot: Lot, blocks: int) -> Line:
         forms=(),
         records=tuple(sorted(found)),
         quality=worst_class(found.values()),
-        extrapolated=any(_extrapolated(one, passed) for one in found.values()),
+        extrapolated=any(_extrapolated(one, passed) for e in members for one in passed.own.get(e, ())),
         gap=missing or (None if column.certified else UNCERTIFIED_MEMBERS),
     )

@@ -48,6 +48,8 @@ class Passed:
     exposed : tuple of Exposed
     records : mapping of element to records
         Behind every number said of it.
+    own : mapping of element to records
+        Those of them that this step itself hangs on.
     behind : mapping of element to records
         Behind its content as the lot leaves: earlier steps and start included.
     gaps : mapping of element to gaps
@@ -80,6 +82,7 @@ class Passed:
     setting: Setting
     exposed: tuple[Exposed, ...]
     records: Mapping[str, tuple[Found, ...]]
+    own: Mapping[str, tuple[Found, ...]]
     behind: Mapping[str, tuple[Found, ...]]
     gaps: Mapping[str, tuple[Gap, ...]]
     shares: Array
@@ -304,6 +307,7 @@ def _gather(
     hot = np.broadcast_to(schedule.T.max(axis=0), (n,))
     parcels = _parcels(setting, after, hot) if explain else {}
     moved = moved_by(setting, exposed, parts, loss_records, came)
+    own = moved_by(setting, exposed, parts, loss_records, {})
     return Passed(
         setting.choice,
         setting.impurities,
@@ -314,6 +318,7 @@ def _gather(
         setting,
         exposed,
         seen_in(setting, exposed, parcels.values(), moved),
+        seen_in(setting, exposed, parcels.values(), own),
         {element: tuple(found.values()) for element, found in moved.items()},
         _gaps(exposed),
         shares,

@@ -27,6 +27,7 @@ VALUE = {
     "packages": ("permeability_mol_per_m_s_Pa", "times"),
     "desiccants": ("capacity_kg_per_kg", "times"),
     "sticking": ("probability", "times"),
+    "hot_zones": ("getter_share", "times"),
     "gas_transport": ("D_m2_per_s", "times"),
     "transfer": ("k_m_per_s", "times"),
 }
@@ -47,7 +48,7 @@ def shifted(record: Record) -> Record:
         spread /= log(10.0)
     if record.table == "hosts":
         factor = 1.0 + record.spread
-    if record.table in ("sticking", "wetting", "diffusion"):
+    if record.table in ("sticking", "wetting", "diffusion", "hot_zones"):
         factor = 1.0 / factor
     if record.table == "atmospheres" and value > 1e4:
         # the species of a gas add up to one, within what the tables allow

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 from overlays import moved_by_one_sigma, rows_of, without
-from works import lines, run, toml
+from works import WALLS, lines, run, toml
 
 from purity.database import Library, load
 from purity.errors import PurityError
@@ -24,6 +24,7 @@ MOVED = (
     "gibbs:Al2O3/solid/alpha",
     "gibbs:H2O/gas",
     "hosts:Cu/liquid",
+    "hot_zones:graphite",
     "packages:polyethylene/H2O",
     "priors:uncertified metal",
     "sieverts:Cu/liquid/O",
@@ -35,24 +36,23 @@ MOVED = (
     "wetting:Cu/C",
 )
 TAKEN_OUT = (
-    "activity:Cu/liquid/Si",
-    "atmospheres:argon N5.0/O2",
     "diffusion:Cu/liquid/O",
     "films:Cu/oxide/indoor air",
     "gas_transport:O2/argon",
     "gibbs:MgO/solid",
     "packages:polyethylene/O2",
     "sieverts:Cu/liquid/O",
-    "sticking:Cu/O2/liquid",
     "surfaces:*/etched/O",
     "traces:magnesia/CaO",
     "transfer:free surface/induction",
-    "wall_values:isostatic graphite, purified/density",
     "wetting:Cu/MgO",
 )
 #: What says how sure a line is, not how much it holds.
 SAYS = ("records", "quality", "extrapolated")
-WAY = ("magnesia", "bag")
+#: Tables whose rows act in storage alone: a lot that is only stored tells as much.
+STORED = ("desiccants", "films", "packages")
+MELTED = WALLS, ("magnesia", "bag")
+KEPT: tuple[dict[str, str], tuple[str, ...]] = {}, ("bag",)
 
 
 @pytest.fixture(scope="session")
@@ -61,8 +61,26 @@ def library() -> Library:
 
 
 @pytest.fixture(scope="session")
-def base(library: Library, tmp_path_factory: pytest.TempPathFactory) -> Result:
-    return run(tmp_path_factory.mktemp("remelt"), toml(), library, WAY)
+def melted(library: Library, tmp_path_factory: pytest.TempPathFactory) -> Result:
+    return run(tmp_path_factory.mktemp("melted"), toml(MELTED[0]), library, MELTED[1])
+
+
+@pytest.fixture(scope="session")
+def kept(library: Library, tmp_path_factory: pytest.TempPathFactory) -> Result:
+    return run(tmp_path_factory.mktemp("kept"), toml(KEPT[0]), library, KEPT[1])
+
+
+@pytest.fixture
+def base(request: pytest.FixtureRequest, quantity: str) -> Result:
+    """Return the run that a quantity is tried on."""
+    name = "kept" if quantity.startswith(STORED) else "melted"
+    result: Result = request.getfixturevalue(name)
+    return result
+
+
+def tried(quantity: str, folder: Path, library: Library) -> Result:
+    walls, way = KEPT if quantity.startswith(STORED) else MELTED
+    return run(folder, toml(walls), library, way)
 
 
 def numbers(line: Line) -> dict[str, object]:
@@ -77,7 +95,7 @@ def used(result: Result) -> set[str]:
 def test_a_record_moves_the_lines_that_list_it_and_no_others(
     quantity: str, base: Result, library: Library, tmp_path: Path
 ) -> None:
-    other = run(tmp_path, toml(), moved_by_one_sigma(library, quantity, tmp_path / "own"), WAY)
+    other = tried(quantity, tmp_path, moved_by_one_sigma(library, quantity, tmp_path / "own"))
     before, after = lines(base), lines(other)
     listing = {key for found in (before, after) for key, line in found.items() if quantity in line.records}
     assert listing
@@ -90,8 +108,8 @@ def test_a_record_moves_the_lines_that_list_it_and_no_others(
     assert moved
 
 
-def test_every_table_with_a_spread_is_tried(base: Result) -> None:
-    tables = {quantity.split(":")[0] for quantity in used(base)}
+def test_every_table_with_a_spread_is_tried(melted: Result) -> None:
+    tables = {quantity.split(":")[0] for quantity in used(melted)}
     assert tables - {quantity.split(":")[0] for quantity in MOVED} <= {"solubility", "partition"}
 
 
@@ -100,7 +118,7 @@ def test_what_is_taken_out_is_said_and_lifts_nothing(
     quantity: str, base: Result, library: Library, tmp_path: Path
 ) -> None:
     assert rows_of(library, quantity)
-    other = run(tmp_path, toml(), without(library, quantity, tmp_path / "own"), WAY)
+    other = tried(quantity, tmp_path, without(library, quantity, tmp_path / "own"))
     assert f"{quantity}: withdrawn by your own table" in other.gaps
     for before, after in zip(base.steps, other.steps, strict=True):
         relying = {c.name for c in before.choices if any(quantity in line.records for line in c.lines)}
@@ -112,8 +130,10 @@ def test_what_is_taken_out_is_said_and_lifts_nothing(
                     assert now[one] is None or now[other_one] is None or now[one] >= now[other_one]
 
 
-@pytest.mark.parametrize("quantity", ["priors:uncertified metal", "hosts:Cu/liquid", "elements:Mg"])
+@pytest.mark.parametrize(
+    "quantity", ["priors:uncertified metal", "hosts:Cu/liquid", "transitions:Cu/melting/liquid"]
+)
 def test_what_nothing_can_do_without_is_named(quantity: str, library: Library, tmp_path: Path) -> None:
     bare = without(library, quantity, tmp_path / "own")
     with pytest.raises(PurityError, match=f"{quantity}|no phase of Cu"):
-        run(tmp_path, toml(), bare, WAY)
+        tried(quantity, tmp_path, bare)

@@ -87,14 +87,14 @@ name = "open shelf"
 [[step.choice]]
 name = "bag"
 package = { barrier = "polyethylene", thickness = "100 um", area = "0.6 m2", head_space = "2 L", fill = \
-"clean-room air", desiccant = "250 g", desiccant_kind = "silica gel" }
+"clean-room air", desiccant = "400 g", desiccant_kind = "silica gel" }
 """
 
 
 def toml(walls: dict[str, str] = WALLS, *, lot: str = LOT, store: str = STORE) -> str:
-    """Return the scenario file with the given melt choices, in their order."""
+    """Return the scenario file with the given melt choices in their order; without any, the lot is stored."""
     choices = "".join(f'[[step.choice]]\nname = "{name}"\n{wall}\n' for name, wall in walls.items())
-    return lot + MELT + choices + store
+    return lot + (MELT + choices if walls else "") + store
 
 
 def written(folder: Path, text: str, library: Library) -> Scenario:

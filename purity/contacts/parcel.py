@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.contacts.setting import Setting
-from purity.database import Found
+from purity.database import Found, outside
 from purity.driving_force.equilibrium import Outcome, equilibrium
 from purity.driving_force.pure import atoms
 from purity.driving_force.species import gibbs, select
@@ -114,5 +114,15 @@ def parcel(material: Material, setting: Setting, x: Array, T: Array) -> Parcel |
         float(solved.mean()),
         gap,
         tuple(f"{s.name}: {s.why}" for s in chosen.species),
-        chosen.found,
+        _in_use(chosen.found, T),
+    )
+
+
+def _in_use(found: tuple[Found, ...], T: Array) -> tuple[Found, ...]:
+    """Leave out rows of a substance for other temperatures, where it has one for these."""
+    here = [not np.all(outside(one.record, T)) for one in found]
+    names = ["/".join(one.record.quantity.split("/")[:2]) for one in found]
+    held = {name for name, inside in zip(names, here, strict=True) if inside}
+    return tuple(
+        one for one, name, inside in zip(found, names, here, strict=True) if inside or name not in held
     )
