@@ -141,12 +141,40 @@ def _thinner(setting: Setting, contact: Contact, depth: Array) -> tuple[str, ...
     return (f"{contact.name} takes off {share:.1%} of the metal",) if share >= 5e-4 else ()
 
 
-def removed(ledger: Array, exposed: Sequence[Exposed], parts: Sequence[Part]) -> None:
-    """Book what was taken out of a bath on its own row of the ledger, (C, I, N), in place."""
+def removed(
+    ledger: Array, exposed: Sequence[Exposed], parts: Sequence[Part], impurities: Sequence[str]
+) -> Array:
+    """Book what was taken out of a bath on its own row of the ledger, (C, I, N), in place.
+
+    Returns
+    -------
+    (I, N) array
+        What went out with the compound of an element that follows, of the elements that lead: still in the
+        bath as the parts have it.
+    """
+    partners: Array = np.zeros_like(ledger[0])
     rows = [c for c, one in enumerate(exposed) if one.exposure.contact == REMOVAL]
     for part in parts:
+        taken = part.pickup.ledger[len(part.rows) :].sum(axis=0)
         for c in rows:
-            ledger[c][part.index] += part.pickup.ledger[len(part.rows) :].sum(axis=0)
+            ledger[c][part.index] += taken
+        if len(part.index) != 1 or not part.skins or not np.any(taken):
+            continue
+        counts = atoms(part.skins[0][0].name)
+        own = int(part.index[0])
+        for j, other in enumerate(impurities):
+            if j != own and other in counts:
+                partners[j] -= counts[other] / counts[impurities[own]] * taken[0]
+    return partners
+
+
+def without_partners(state: State, ledger: Array, partners: Array) -> State:
+    """Take out of the bath what went with a compound; the last row of the ledger is that of removal."""
+    if not np.any(partners):
+        return state
+    gone = np.minimum(partners, state.x)
+    ledger[-1] -= gone
+    return replace(state, x=state.x - gone)
 
 
 def finish(done: Done, entered: State, setting: Setting, exposed: Sequence[Exposed]) -> Done:
@@ -348,4 +376,4 @@ def _left(state: State, setting: Setting, nu: Array, thickness: Array | None, ar
     return np.asarray(np.minimum(thickness, np.min(np.stack(makes), axis=0)))
 
 
-__all__ = ["Done", "extra_rows", "finish", "removed", "strip"]
+__all__ = ["Done", "extra_rows", "finish", "removed", "strip", "without_partners"]

@@ -16,7 +16,7 @@ from purity.contacts.setting import Exposed, Setting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
 from purity.errors import MissingRecordError
-from purity.finishing import Done, extra_rows, finish, removed, strip
+from purity.finishing import Done, extra_rows, finish, removed, strip, without_partners
 from purity.followers import Part, total
 from purity.kinetics.advance import HELD_BACK_BY, State
 from purity.kinetics.arrhenius import curve_integral
@@ -207,8 +207,9 @@ def pass_step(
     for c, taken in off.items():
         ledger[c] += taken
     parts = move(entered, setting, schedule, exposed, history, explain=explain)
-    removed(ledger, exposed, parts)
+    partners = removed(ledger, exposed, parts, impurities)
     passed = _gather(state, entered, setting, schedule, exposed, ledger, parts, came or {}, explain)
+    passed = replace(passed, after=without_partners(passed.after, passed.ledger, partners))
     done = _finished(passed, entered, said)
     return _frozen(done) if explain and choice.process == "cast" else done
 

@@ -173,3 +173,43 @@ temperature = "1200 degC"
     )
     passed = through(text, library)
     assert any(gap.quantity == "vapour:SiO2" for gap in passed.gaps["Si"])
+
+
+def test_skimming_takes_out_its_share_of_what_is_suspended(library: Library) -> None:
+    text = """
+title = "skim"
+[lot]
+host = "Cu"
+mass = "2 kg"
+certificate = { O = 40, Al = 10 }
+limits = { O = 50, Al = 20 }
+[lot.charge]
+form = { shape = "slab", thickness = "25 mm", width = "50 mm", length = "50 mm" }
+surface = "etched"
+days_in_air = 1
+[[step]]
+name = "melt"
+process = "melt"
+temperature = "1150 degC"
+duration = "10 min"
+wall_area = "200 cm2"
+free_surface = "50 cm2"
+immersed = []
+container = { name = "alumina", phases = { Al2O3 = 1 } }
+atmosphere = "argon N6.0"
+flow = "2 L/min"
+"""
+    kept = through(text, library)
+    skimmed = through(text + 'removal = { Al2O3 = "75 %" }\n', library)
+    metal, oxygen = (kept.impurities.index(element) for element in ("Al", "O"))
+    suspended = kept.after.suspended[metal]
+    # nearly all of the 10 ppm of aluminium
+    assert np.median(suspended) == pytest.approx(np.median(kept.before.x[metal]), rel=0.05)
+    assert skimmed.after.suspended[metal] == pytest.approx(0.25 * suspended, rel=1e-6)
+    out = skimmed.ledger[skimmed.contacts.index("removal")]
+    assert out[metal] == pytest.approx(-0.75 * suspended, rel=1e-6)
+    # three atoms of oxygen leave with two of aluminium
+    assert out[oxygen] == pytest.approx(1.5 * out[metal], rel=1e-6)
+    lost = kept.after.x[oxygen] - skimmed.after.x[oxygen]
+    assert lost == pytest.approx(-out[oxygen], rel=1e-6)
+    assert "removal" not in kept.contacts
