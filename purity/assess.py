@@ -30,7 +30,7 @@ from purity.passing import Passed, pass_step
 from purity.result import ChoiceResult, Result, RouteResult, ScenarioFacts, Stamp, StateWord, StepResult
 from purity.risk import Standing, load, standings
 from purity.risk import state as standing_state
-from purity.scenario import Choice, Given, Lot, Material, Scenario, Step, scenario_hash
+from purity.scenario import Choice, Dust, Given, Lot, Material, Residue, Scenario, Step, scenario_hash
 from purity.uncertainty import assumed_share, band, drivers
 
 Array = NDArray[np.float64]
@@ -114,7 +114,7 @@ def assess(
 
 
 def followed(scenario: Scenario) -> tuple[str, ...]:
-    """Return the elements of a run, sorted: certified, limited, gas formers, and those of the walls."""
+    """Return the elements of a run, sorted: certified, limited, gas formers, those of walls and residues."""
     lot = scenario.lot
     elements = {*counts(lot), *GAS_FORMERS}
     for step in scenario.steps:
@@ -123,6 +123,10 @@ def followed(scenario: Scenario) -> tuple[str, ...]:
                 if isinstance(contact.body, Material):
                     for formula in (*contact.body.phases, *contact.body.traces):
                         elements |= set(atoms(formula))
+                if isinstance(contact.body, Residue):
+                    elements |= set(contact.body.amounts)
+                if isinstance(contact.body, Dust):
+                    elements |= set(contact.body.contents)
     return tuple(sorted(elements - {lot.host}))
 
 

@@ -72,7 +72,10 @@ def dust(contact: Contact, setting: Setting) -> Exposed:
 
 
 def residue(contact: Contact, setting: Setting) -> Exposed:
-    """Return what a touch, a cut, a rinse or a heel leaves: amount per area x area."""
+    """Return what a touch, a cut, a rinse or a heel leaves: amount per area x area.
+
+    A heel stands on an area of 1 m2; its own host is not added to the lot, for it is grams in kilograms.
+    """
     body = contact.body
     assert isinstance(body, Residue)
     area = setting.sample(contact.area)

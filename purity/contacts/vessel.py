@@ -8,15 +8,17 @@ what the zone did, so nothing is taken from it.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.constants import ATM, R
+from purity.constants import ATM, P0, R
 from purity.contacts.setting import T_ROOM, Setting, spread_factor
-from purity.database import Found
-from purity.driving_force.pure import atoms
+from purity.database import Found, Gap
+from purity.draws import Draws
+from purity.driving_force.pure import atoms, vapour
 from purity.scenario import Furnace, Given
 
 Array = NDArray[np.float64]
@@ -27,6 +29,8 @@ OXIDISING = ("O2", "H2O", "CO2")
 #: and 10 mbar with a vacuum pump at the vessel, to between 1 and 100 mbar without (common practice, no
 #: source).
 LEFT_PUMPED, LEFT = (1e-4, 1e-2), (1e-3, 1e-1)
+#: Vapour pressure from which a metal of the last charge is told, Pa (common practice, no source).
+VOLATILE = 1.0
 
 
 def outgassing(setting: Setting, furnace: Furnace) -> str:
@@ -79,7 +83,30 @@ def gettered(
 
 
 def vapours(setting: Setting, furnace: Furnace) -> tuple[str, ...]:
-    """Return what the hot zone itself sends out, as a warning: no record says how much lands."""
+    """Return what the hot zone and the last charge send out, as warnings: no record says how much lands."""
+    return (*_from_zone(setting, furnace), *condensates(setting, furnace))
+
+
+def condensates(setting: Setting, furnace: Furnace) -> tuple[str, ...]:
+    """Return warnings of metals of the last charge that evaporate again at the hottest point."""
+    said = {word.casefold() for word in re.findall(r"[A-Za-z]+", furnace.last_charge or "")}
+    symbols = set(re.findall(r"\b[A-Z][a-z]?\b", furnace.last_charge or ""))
+    hottest = max(given.median for _, given in setting.choice.profile)
+    texts = []
+    for row in setting.library.rows("elements"):
+        element, name = row.words["element"], row.words["name"]
+        if element == setting.host or not (element in symbols or name.casefold() in said):
+            continue
+        pressure = vapour(setting.library, element, hottest, Draws.nominal())
+        if not isinstance(pressure, Gap) and float(np.exp(pressure.value.ravel()[0])) * P0 > VOLATILE:
+            texts.append(
+                f"the furnace last held {name}: what condensed in it evaporates again onto the metal; "
+                "no record says how much, so none is counted: bake the furnace out empty first"
+            )
+    return tuple(texts)
+
+
+def _from_zone(setting: Setting, furnace: Furnace) -> tuple[str, ...]:
     found = _zone(setting, furnace)
     if found is None or not found.record.words["vapours"]:
         return ()
@@ -136,4 +163,4 @@ def _takes(setting: Setting, found: Found) -> bool:
     return fields["getter_share"] > 0 and hottest >= fields["T_from_K"]
 
 
-__all__ = ["air_left", "gettered", "outgassing", "swept", "vapours", "vessel_moles"]
+__all__ = ["air_left", "condensates", "gettered", "outgassing", "swept", "vapours", "vessel_moles"]

@@ -124,3 +124,11 @@ def test_a_foil_never_lets_more_through(setting: Setting) -> None:
     # way
     taken, passed = (wrapped(setting, gas, area, None, free, metal)[0] for gas in ("O2", "Ar"))
     assert np.all(taken < passed)
+
+
+@pytest.mark.parametrize(
+    ("last", "told"),
+    [("zinc castings", 1), ("Pb", 1), ("molybdenum", 0), ("niobium", 0), ("stainless steel", 0), (None, 0)],
+)
+def test_a_volatile_last_charge_is_told(setting: Setting, last: str | None, told: int) -> None:
+    assert len(vessel.condensates(setting, Furnace(last_charge=last))) == told
