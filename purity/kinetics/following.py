@@ -172,17 +172,20 @@ def _step(total: Array, rates: _Rates, dt: Array, left: Array) -> Array:
     dt = np.asarray(dt)
     open_ended = np.ones_like(left, dtype=bool)
     gained = _free(total, rates, dt, open_ended, left)
-    spent = gained > left
-    if spent.any():
-        open_ended = ~spent
+    # where one contact runs out the others give more, so that another may run out: no more than each once
+    for _ in range(len(left)):
+        spent = open_ended & (gained > left)
+        if not spent.any():
+            break
+        open_ended &= ~spent
         gained = _free(total, rates, dt, open_ended, left)
     over = total > rates.cap
     if not over.any():
-        return np.minimum(gained, left)
-    capped = np.where(open_ended, rates.kappa * (rates.ceiling - rates.cap) * dt, left)
+        return gained
+    capped = np.minimum(np.where(open_ended, rates.kappa * (rates.ceiling - rates.cap) * dt, left), left)
     # above the cap less leaves than if all were dissolved, so no content falls below the free course
     short = capped.sum(axis=0) < gained.sum(axis=0)
-    return np.minimum(np.where(over & ~short, capped, gained), left)
+    return np.where(over & ~short, capped, gained)
 
 
 def _free(total: Array, rates: _Rates, dt: Array, open_ended: NDArray[np.bool_], left: Array) -> Array:
