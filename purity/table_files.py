@@ -264,7 +264,8 @@ def _faults(tables: Rows, sources: Mapping[str, object], melting: Mapping[str, f
 
 def _melting(tables: Rows) -> dict[str, float]:
     rows = tables.get("transitions", ())
-    return {r.words["element"]: r.fields["T_K"] for r in rows if r.words["kind"] == "melting"}
+    melting = (r for r in rows if r.words["kind"] == "melting" and r.rank > 0)
+    return {r.words["element"]: r.fields["T_K"] for r in melting}
 
 
 def check(folder: Path) -> list[Fault]:
