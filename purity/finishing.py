@@ -14,7 +14,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from purity.constants import ATM, P0
+from purity.constants import ATM, DILUTE, P0
 from purity.contacts.gas import Load, gas_conductance
 from purity.contacts.setting import T_ROOM, Exposed, Setting, spread_factor, vapour_speed
 from purity.contacts.storage import grown, storage_films, water_feeds
@@ -183,12 +183,13 @@ def finish(done: Done, entered: State, setting: Setting, exposed: Sequence[Expos
 
 
 def _eaten(done: Done, entered: State, setting: Setting) -> Done:
-    """Replace what eaten walls give by their measured rate of loss, where one is known for all of them."""
+    """Replace what walls with a measured rate of loss give by that rate, unless another wall is eaten too."""
     if not setting.liquid or done.attacked.mean() <= EATEN:
         return done
     walls = [(c, one) for c, one in enumerate(setting.choice.contacts) if one.role in ("wall", "mould")]
     rates = [(c, one, known) for c, one in walls if (known := _rate_of_loss(setting, one)) is not None]
-    if not rates:
+    known_walls = {c for c, _, _ in rates}
+    if not rates or any(_eats(done.ledger[c]) for c, _ in walls if c not in known_walls):
         return done
     ledger, x, suspended = done.ledger.copy(), done.after.x.copy(), done.after.suspended.copy()
     records = dict(done.records)
@@ -213,6 +214,11 @@ def _eaten(done: Done, entered: State, setting: Setting) -> Done:
         notes = (*notes, f"{contact.name} is eaten: wall loss taken as measured at {celsius:.0f} degC")
     after = replace(done.after, x=x, suspended=suspended)
     return Done(after, ledger, np.zeros_like(done.attacked), done.shares, deepest, records, notes)
+
+
+def _eats(gained: Array) -> bool:
+    """Whether a wall alone takes the metal out of the dilute range in more than EATEN of the draws."""
+    return bool(np.mean(np.nan_to_num(gained).max(axis=0) > DILUTE) > EATEN)
 
 
 def _rate_of_loss(setting: Setting, contact: Contact) -> tuple[str, Found] | None:

@@ -126,6 +126,15 @@ def test_a_wall_with_a_record_of_its_loss_is_ranked_and_its_depth_told(library: 
     assert ratio == pytest.approx(3 * 15.999 / (2 * 26.982), rel=1e-3)
 
 
+def test_another_wall_that_is_eaten_without_a_record_keeps_the_choice_attacked(library: Library) -> None:
+    known = lot("Ti", "1 kg", "O = 300, Al = 5, Si = 5", "O = 1000, Al = 100, Si = 100")
+    step = melt("1720 degC", "10 min", container("Al2O3")).replace(
+        "immersed = []", 'immersed = [{ name = "sheath", phases = { SiO2 = 1 }, area = "20 cm2" }]'
+    )
+    choice = run(known + step, library)["Al2O3"]
+    assert (choice.state, choice.attack_um) == ("attacked", None)
+
+
 def test_aluminium_in_boron_nitride_is_not_saturated_with_boron(library: Library) -> None:
     known = lot("Al", "1 kg", "B = 0.5, N = 1", "B = 10, N = 10")
     boron = of(run(known + melt("720 degC", "20 min", container("BN")), library)["BN"], "B")
