@@ -241,7 +241,17 @@ def _flowing(
     if furnace.exhaust:
         measured = {name: setting.sample(given) * pressure / P0 for name, given in furnace.exhaust.items()}
         inputs = (*inputs, *furnace.exhaust.values())
-        return Load({**mixed(fractions), **measured}, supply, {}, pressure, records, inputs, (), main, True)
+        return Load(
+            {**mixed(fractions), **measured},
+            supply,
+            {},
+            pressure,
+            records,
+            inputs,
+            vapours(setting, furnace),
+            main,
+            True,
+        )
     fed, zone = gettered(setting, furnace, fractions)
     notes: tuple[str, ...] = vapours(setting, furnace)
     if not entering:
