@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from works import FEW, LOT, MELT, STORE, WALLS, lines, run, toml, written
 
-from purity.assess import assess, followed, initial, molar_masses
+from purity.assess import assess, followed, initial, molar_masses, prior
 from purity.database import Library, load
 from purity.draws import Draws, sample
 from purity.errors import ScenarioError
@@ -107,22 +107,24 @@ def test_more_blocks_keep_the_draws_of_the_first(library: Library, folder: Path)
 
 
 def test_an_uncertified_element_counts_by_what_it_gains(library: Library, folder: Path) -> None:
-    walls = {"yttria": 'container = "yttria"', "magnesia": TWO["magnesia"]}
-    tight = LOT.replace("Y   = 0.2", "Y = 1e-7").replace("Y  = 0.2", "Y = 1e-7")
-    result = run(folder, toml(walls, lot=tight, store=""), library)
+    limit = 0.01
+    lot = LOT.replace("Fe = 0.30\n", "", 1).replace("Fe = 1.0\n", f"Fe = {limit}\n", 1)
+    result = run(folder, toml(TWO, lot=lot, store=""), library)
     by_name = {choice.name: choice for choice in result.steps[0].choices}
     found = lines(result)
-    taken = found["melt", "yttria", "Y"]
-    assert (taken.start, taken.end, taken.chance_over, taken.spent) == (None, None, None, None)
+    taken, clean = found["melt", "magnesia", "Fe"], found["melt", "graphite", "Fe"]
+    for line in (taken, clean):
+        assert (line.start, line.end, line.chance_over, line.spent, line.word) == (None,) * 5
+        assert line.gap == "not certified: the end is not known"
     assert taken.pickup is not None
-    assert taken.pickup.median > 1e-7
-    assert "not certified" in (taken.gap or "")
-    assert by_name["yttria"].deciding == "Y"
-    # the start that is taken for want of a certificate is far above this limit, yet counts for nothing
-    left = found["melt", "magnesia", "Y"]
-    assert left.pickup is not None
-    assert left.pickup.high <= 1e-7
-    assert by_name["magnesia"].deciding != "Y"
+    assert taken.pickup.low > limit
+    assert by_name["magnesia"].deciding == "Fe"
+    assert (by_name["magnesia"].chance_over or 0.0) > 0.9
+    # the start that stands in for the certificate passes this limit by itself, yet counts for nothing
+    assert 1e6 * prior(library, "Fe").high > limit
+    assert clean.pickup is not None
+    assert clean.pickup.high < limit
+    assert by_name["graphite"].chance_over == 0.0
 
 
 def test_a_route_that_is_not_there_is_refused(library: Library, folder: Path) -> None:

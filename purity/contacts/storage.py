@@ -94,8 +94,8 @@ def stored(
     by_element: dict[str, tuple[Found, ...]] = {}
     for element in setting.impurities:
         own = [found for film, found in films if film.nu[setting.impurities.index(element)]]
-        wet = (*water, *_water(setting)) if element in ("H", "O") else ()
-        by_element[element] = (*own, *records, *wet) if own or wet else ()
+        damp = (*water, *_water(setting)) if element in ("H", "O") else ()
+        by_element[element] = (*own, *records, *damp) if own or damp else ()
     names = {c.name: records for c in carriers}
     rate = Curve(setting.T[:1], np.zeros((len(setting.impurities), 1, 1)))
     exposure = Exposure(contact.name, area, rate, carriers, (), tuple(film for film, _ in films))
