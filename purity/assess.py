@@ -37,6 +37,8 @@ Array = NDArray[np.float64]
 
 #: Most runs of a choice that one assessment may make for its routes.
 MOST_RUNS = 400
+#: Runs up to which every route is walked; beyond, only those from the best HEADS choices of the first step.
+FULL_RUNS, HEADS = 40, 3
 #: Share of a content that an error of the time steps has to reach to be told.
 WORTH_SAYING = 0.05
 
@@ -94,7 +96,8 @@ def assess(
             walked[(*taken, one.choice.name)] = one
         steps.append(_step_result(step.name, step.process, taken, passed, scenario, library, draws))
         taken = (*taken, _next(steps[-1], route, number, scenario))
-    routes = _routes(scenario, run, walked, draws, executor)
+    heads, left_out = _heads(scenario, steps)
+    routes = _routes(scenario, run, walked, draws, executor, heads)
     gaps = tuple(
         dict.fromkeys(gap_text(g) for one in walked.values() for found in one.gaps.values() for g in found)
     )
@@ -108,7 +111,7 @@ def assess(
         tuple(steps),
         routes,
         cautions(scenario, library),
-        tuple(dict.fromkeys((*gone, *gaps))),
+        tuple(dict.fromkeys((*gone, *gaps, *left_out))),
         tuple(sorted({citation for _, citation, _ in bibliography(library, used)})),
     )
 
@@ -379,18 +382,36 @@ class _End:
     weighed: _Weighed
 
 
+def _heads(scenario: Scenario, steps: Sequence[StepResult]) -> tuple[list[str], tuple[str, ...]]:
+    """Return the first choices whose routes are walked, and what is left out in words.
+
+    All of them while that takes at most FULL_RUNS runs; else the best few of the first step, for a later
+    step mends little of what the first one brought in.
+    """
+    sizes = [len(step.choices) for step in scenario.steps]
+    names = [choice.name for choice in scenario.steps[0].choices]
+    if len(sizes) < 2 or int(np.sum(np.cumprod(sizes))) <= FULL_RUNS:
+        return names, ()
+    ranked = [choice.name for choice in steps[0].choices if choice.rank is not None][:HEADS]
+    best = ranked or [steps[0].choices[0].name]
+    later = int(np.sum(np.cumprod(sizes[1:])))
+    if later * len(best) > MOST_RUNS:
+        return [], (f"routes: {int(np.prod(sizes))} are too many to walk; give --route",)
+    text = f"routes: walked from the best {len(best)} of {len(names)} choices of {scenario.steps[0].name}"
+    return best, (text,) if len(best) < len(names) else ()
+
+
 def _routes(
     scenario: Scenario,
     run: Callable[..., Passed],
     walked: Mapping[tuple[str, ...], Passed],
     draws: Draws,
     executor: Executor | None,
+    names: Sequence[str],
 ) -> tuple[RouteResult, ...]:
-    """Every route, best first; each prefix is run once and shared by the routes that begin with it."""
-    runs = int(np.sum(np.cumprod([len(step.choices) for step in scenario.steps])))
-    if len(scenario.steps) < 2 or runs > MOST_RUNS:
+    """Routes that begin with some choices, best first; each prefix is run once and shared."""
+    if len(scenario.steps) < 2 or not names:
         return ()
-    names = [choice.name for choice in scenario.steps[0].choices]
     known = [{path: one for path, one in walked.items() if path[0] == name} for name in names]
     walk = partial(_ends, partial(run, explain=False), scenario.steps[1:], scenario.lot)
     heads = [(walked[(name,)],) for name in names]
