@@ -23,6 +23,7 @@ MOVED = (
     "gas_transport:H2O/argon",
     "gibbs:Al2O3/solid/alpha",
     "gibbs:H2O/gas",
+    "hosts:Cu/fcc",
     "hosts:Cu/liquid",
     "hot_zones:graphite",
     "packages:polyethylene/H2O",

@@ -124,7 +124,8 @@ def test_an_uncertified_element_counts_by_what_it_gains(library: Library, folder
     assert 1e6 * prior(library, "Fe").high > limit
     assert clean.pickup is not None
     assert clean.pickup.high < limit
-    assert by_name["graphite"].deciding != "Fe"
+    assert by_name["graphite"].chance_over is not None
+    assert by_name["graphite"].chance_over < 0.1
 
 
 def test_a_route_that_is_not_there_is_refused(library: Library, folder: Path) -> None:

@@ -12,6 +12,7 @@ from dataclasses import replace
 from purity.constants import GAS_FORMERS
 from purity.contacts.gas import LEAK, gases
 from purity.contacts.setting import (
+    T_ROOM,
     Exposed,
     Setting,
     behind,
@@ -22,7 +23,7 @@ from purity.contacts.setting import (
     withdrawn,
 )
 from purity.contacts.storage import water_gaps
-from purity.database import Found, Gap
+from purity.database import Found, Gap, phase_at
 from purity.driving_force.pure import atoms
 from purity.scenario import Atmosphere, Charge, Contact, Furnace, Material, Package
 
@@ -55,11 +56,22 @@ def accounted(made: Exposed, contact: Contact, setting: Setting) -> Exposed:
         case _:
             return made
     made = replace(made, gaps=together(made.gaps, gaps))
+    if isinstance(contact.body, Charge):
+        return _with_records(made, _pieces(setting))
     if not isinstance(contact.body, Atmosphere | Package):
         return made
     felt = {"O2", "H2O", *(carrier.name for carrier in made.exposure.carriers)}
     records = behind(setting, *made.inputs)
+    if setting.choice.process == "store":
+        records = (*records, *_pieces(setting))
     return _with_records(made, tuple(f for f in records if f.record.words.get("species", "O2") in felt))
+
+
+def _pieces(setting: Setting) -> tuple[Found, ...]:
+    """Return the density from which the number of pieces, and so their surface, follows."""
+    phase = phase_at(setting.library, setting.host, T_ROOM)
+    found = setting.library.find("hosts", host=setting.host, phase=phase)
+    return () if isinstance(found, Gap) else (found,)
 
 
 def _with_records(made: Exposed, records: tuple[Found, ...]) -> Exposed:
