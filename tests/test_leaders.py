@@ -1,7 +1,7 @@
 """The simplified bath (leaders, followers, idle gases) against the full one: nothing left out, all tied.
 
-The copper holds too little aluminium for alumina to form in the melt, so that its wall gives all along; energies,
-rates and inputs are drawn.
+The copper holds too little aluminium for alumina to form in the melt, so that its wall gives all along.
+Energies, rates and inputs are drawn.
 """
 
 from __future__ import annotations

@@ -156,7 +156,8 @@ def _rates(channels: Sequence[Channel], cap: Curve, shape: tuple[int, ...], T: A
         kappa.append(metal * (side / (metal + side)))
         share.append(side / (metal + side))
         ceiling.append(np.exp(ln_at(channel.ceiling, T)))
-    return _Rates(*(_stacked(rows, shape) for rows in (kappa, ceiling, share)), np.exp(ln_at(cap, T)))
+    most = np.exp(ln_at(cap, T))
+    return _Rates(_stacked(kappa, shape), _stacked(ceiling, shape), _stacked(share, shape), most)
 
 
 def _stacked(rows: Sequence[Array], shape: tuple[int, ...]) -> Array:
