@@ -110,11 +110,12 @@ ALLOWED: dict[str, set[str]] = {
     "followers": BELOW_ASSESS,
     "moving": BELOW_ASSESS | {"followers"},
     "finishing": BELOW_ASSESS | {"followers"},
+    "starting": BELOW_ASSESS,
     "provenance": BELOW_ASSESS | {"followers"},
     "passing": BELOW_ASSESS | {"followers", "moving", "finishing", "provenance"},
     "lines": BELOW_ASSESS | {"followers", "passing"},
     # the package itself, for its version
-    "assess": BELOW_ASSESS | {"", "catalogue", "followers", "passing", "lines"},
+    "assess": BELOW_ASSESS | {"", "catalogue", "followers", "passing", "lines", "starting"},
     "routes": BELOW_ASSESS | {"assess"},
     "window": BELOW_ASSESS | {"assess"},
     "levers": BELOW_ASSESS | {"assess"},
