@@ -245,18 +245,33 @@ def _present(
     _, groups, _ = _leaders(plan, len(setting.impurities))
     leaders = {int(i) for group in groups for i in group}
     start = np.broadcast_to(schedule.T[0], (setting.draws.n,))
-    own = _simple(seen, leaders)
+    own = _simple(seen, leaders, plan)
     near = {name: products.skin(setting, name) for name in products.within_reach(own, entered.x, ())}
-    return {n: s for n, s in near.items() if products.saturation(s[0], entered.x, start).max() > BEYOND}
+    excess = {n: float(products.saturation(s[0], entered.x, start).max()) for n, s in near.items()}
+    first: dict[tuple[int, ...], str] = {}
+    for name in sorted(near, key=lambda n: -excess[n]):
+        if excess[name] > BEYOND:
+            first.setdefault(tuple(np.flatnonzero(near[name][0].nu).tolist()), name)
+    return {name: near[name] for name in first.values()}
 
 
-def _simple(seen: Mapping[str, tuple[Array, float]], leaders: set[int]) -> dict[str, tuple[Array, float]]:
-    """Compounds of at most two of the leading elements: no slag or mixed oxide forms in the bath."""
-    return {
-        f: s
-        for f, s in seen.items()
-        if np.count_nonzero(s[0]) <= 2 and set(np.flatnonzero(s[0]).tolist()) <= leaders
+def _simple(
+    seen: Mapping[str, tuple[Array, float]], leaders: set[int], plan: Plan
+) -> dict[str, tuple[Array, float]]:
+    """Compounds of at most two of the leading elements: no slag or mixed oxide forms in the bath.
+
+    What a leading wall ties (its own compound, or another of the same elements) goes to that wall, not to
+    a skin beside it: two of them would leave the bath no one answer.
+    """
+    walls = {
+        frozenset(np.flatnonzero(c.nu).tolist())
+        for e in plan.exposures
+        for c in e.carriers
+        if c.conductance is None and c.inventory is None
     }
+    taken = walls | {frozenset(np.flatnonzero(skin.nu).tolist()) for skin, _ in plan.skins.values()}
+    own = {f: frozenset(np.flatnonzero(nu).tolist()) for f, (nu, _) in seen.items()}
+    return {f: s for f, s in seen.items() if len(own[f]) <= 2 and own[f] <= leaders and own[f] not in taken}
 
 
 def _without_idle(
@@ -302,7 +317,7 @@ def _grown(
 ) -> Plan | None:
     """Return the plan with the compound furthest beyond saturation and the gases that count, or None."""
     leaders = {int(i) for group in groups for i in group}
-    own = _simple(seen, leaders)
+    own = _simple(seen, leaders, plan)
     end = np.broadcast_to(schedule.T[-1], (setting.draws.n,))
     near = {name: products.skin(setting, name) for name in products.within_reach(own, x, plan.skins)}
     excess = {n: float(products.saturation(s[0], x, end).max() / s[0].nu.sum()) for n, s in near.items()}
