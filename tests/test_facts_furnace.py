@@ -143,6 +143,17 @@ def test_aluminium_in_boron_nitride_is_not_saturated_with_boron(library: Library
     assert boron.end.median < 0.1 * boron.ceiling.median
 
 
+def test_a_wall_covered_by_what_it_forms_does_not_eat_on(library: Library) -> None:
+    """Aluminium is melted in boron nitride for hours: AlN and a boride cover it, and the melt stays pure."""
+    known = lot("Al", "8 kg", "B = 0.1, N = 1", "B = 100, N = 100")
+    choice = run(known + melt("740 degC", "3 h", container("BN")), library)["BN"]
+    boron = of(choice, "B")
+    assert choice.state == "ranked"
+    # solubility of boron in liquid aluminium at 973 K: 0.02 mass % (from memory)
+    assert boron.end is not None
+    assert 0.1 < boron.end.median < 200.0
+
+
 def test_a_wall_product_that_is_swept_away_lets_more_oxygen_in_than_one_that_is_kept(
     library: Library,
 ) -> None:

@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from purity.constants import DILUTE
 from purity.contacts.setting import Setting, dissolution, stoichiometry
 from purity.database import Found, Gap
 from purity.draws import Draws
 from purity.driving_force.pure import atoms
-from purity.kinetics.exposure import Curve, Skin, ln_at
+from purity.kinetics.exposure import Carrier, Curve, Skin, ln_at
 
 Array = NDArray[np.float64]
 
@@ -48,6 +50,52 @@ def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]
         top = float(energy.value.max()) / float(nu[i])
         first[i] = min(first.get(i, (np.inf, "")), (top, formula))
     return {formula: skin(setting, formula) for _, formula in first.values()}
+
+
+def capped(setting: Setting, made: tuple[Carrier, tuple[Found, ...]]) -> tuple[Carrier, tuple[Found, ...]]:
+    """Hold a wall compound to what its face can carry once the compounds with the host lie there.
+
+    Where every element of the compound forms one with the host (AlN and AlB2 on boron nitride under
+    aluminium) while the metal is still dilute, these cover the face, and the product of contents there
+    ends at their saturation.
+
+    Parameters
+    ----------
+    setting : Setting
+    made : (Carrier, records)
+        Of a wall under a melt, before.
+
+    Returns
+    -------
+    (Carrier, records)
+        The same where no such set of compounds is lower.
+    """
+    own, found = made
+    held = np.flatnonzero(own.nu)
+    if not setting.liquid or len(held) < 2:
+        return made
+    least: dict[int, Array] = {}
+    used: tuple[Found, ...] = ()
+    for formula in _compounds(setting):
+        nu = stoichiometry(setting, formula)
+        if nu is None or np.count_nonzero(nu) != 1 or setting.host not in atoms(formula):
+            continue
+        i = int(np.flatnonzero(nu)[0])
+        if i not in held:
+            continue
+        energy = dissolution(setting, formula, "solid")
+        if isinstance(energy, Gap):
+            continue
+        ln_x = energy.value / nu[i]
+        least[i] = np.minimum(least[i], ln_x) if i in least else ln_x
+        used += energy.found
+    if len(least) < len(held):
+        return made
+    covered = np.all([least[int(i)] < np.log(DILUTE) for i in held], axis=0)
+    top = np.where(covered, np.sum([own.nu[i] * least[int(i)] for i in held], axis=0), np.inf)
+    if not np.any(top < own.ln_k.ln):
+        return made
+    return replace(own, ln_k=Curve(own.ln_k.T, np.minimum(own.ln_k.ln, top))), (*found, *used)
 
 
 def _compounds(setting: Setting) -> list[str]:

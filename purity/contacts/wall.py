@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from purity.constants import ATM, GRAVITY, P0
+from purity.contacts.products import capped
 from purity.contacts.setting import (
     Exposed,
     Setting,
@@ -74,7 +75,8 @@ def wall(contact: Contact, setting: Setting) -> Exposed:
         records[made[0].name] = (*made[1], *extra)
 
     for formula in _phases(material, setting):
-        add(carrier(setting, formula, "solid", activity=np.ones(1), limit="wetting"), formula)
+        bare = carrier(setting, formula, "solid", activity=np.ones(1), limit="wetting")
+        add(bare if isinstance(bare, Gap) else capped(setting, bare), formula)
     if "C" in material.phases and "C" in setting.impurities:
         pressure = _co_pressure(contact, setting)
         inputs.append(pressure)
