@@ -13,6 +13,7 @@ from purity.contacts.cast import course, segregation
 from purity.contacts.gas import host_evaporation
 from purity.contacts.parcel import Parcel, parcel
 from purity.contacts.setting import Exposed, Setting
+from purity.contacts.wall import wetting
 from purity.database import Found, Gap, Library, phase_at
 from purity.draws import Draws, normal, sample
 from purity.errors import MissingRecordError
@@ -24,7 +25,7 @@ from purity.kinetics.exposure import Curve
 from purity.kinetics.schedule import Schedule, segments
 from purity.moving import move
 from purity.provenance import moved_by, seen_in
-from purity.scenario import Choice, Lot, Material
+from purity.scenario import Choice, Contact, Lot, Material
 
 Array = NDArray[np.float64]
 
@@ -302,6 +303,7 @@ def _gather(
         if done.history is not None and done.times is not None:
             for row, i in enumerate(part.index):
                 series[setting.impurities[int(i)]] = (done.times, done.history[row])
+    shares = _named_for_wetting(shares, ledger, setting)
     after = State(x, suspended, None, np.stack(list(film.values())) if film else None, tuple(film), surface)
     loss, loss_records = _host_loss(setting, schedule, exposed)
     after, ledger = _enrich(after, ledger, setting, loss)
@@ -353,6 +355,26 @@ def _parcels(setting: Setting, after: State, hot: Array) -> dict[int, Parcel]:
             if one is not None:
                 found[c] = one
     return found
+
+
+def _named_for_wetting(shares: Array, ledger: Array, setting: Setting) -> Array:
+    """Call the metal side of the contact that moves most by what slows it: no wetting, or the stirring."""
+    if not setting.liquid:
+        return shares
+    shut = np.array([_unwetted(contact, setting) for contact in setting.choice.contacts])
+    moved = np.abs(np.median(ledger[: len(shut)], axis=-1))
+    gate, stirring = HELD_BACK_BY.index("wetting"), HELD_BACK_BY.index("melt transfer")
+    side, named = shares[gate] + shares[stirring], shares.copy()
+    held = shut[np.argmax(moved, axis=0)]
+    named[gate], named[stirring] = np.where(held, side, 0.0), np.where(held, 0.0, side)
+    return named
+
+
+def _unwetted(contact: Contact, setting: Setting) -> bool:
+    if not isinstance(contact.body, Material):
+        return False
+    opening, _ = wetting(setting, contact.body)
+    return bool(np.median(opening.max(axis=0)) < 0.5)
 
 
 def _host_loss(

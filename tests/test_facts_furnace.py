@@ -233,3 +233,13 @@ def test_a_getter_foil_does_not_help_copper_in_argon(library: Library) -> None:
     assert foil.gain is not None
     gained = foil.gain[elements.index("Ti")] * masses["Ti"] / masses["Cu"]
     assert np.median(gained) > scenario.lot.limits["Ti"]
+
+
+def test_only_a_wall_that_is_not_wetted_is_said_to_hold_back_for_that(library: Library) -> None:
+    """Titanium wets what it reduces; aluminium does not wet silica below some 1100 K (from memory)."""
+    aluminium = lot("Al", "1 kg", "O = 1, Si = 1", "O = 100, Si = 1000")
+    titanium = lot("Ti", "1 kg", "O = 300, Y = 1", "O = 1000, Y = 100")
+    dry = of(run(aluminium + melt("720 degC", "20 min", container("SiO2")), library)["SiO2"], "Si")
+    wet = of(run(titanium + melt("1720 degC", "10 min", container("Y2O3")), library)["Y2O3"], "O")
+    assert dry.held_back_by == "wetting"
+    assert wet.held_back_by != "wetting"
