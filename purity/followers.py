@@ -295,7 +295,7 @@ def _part(
         ledger,
         None,
         None,
-        _shares(f, way, rows, held)[:, np.newaxis, np.newaxis],
+        _shares(f, held)[:, np.newaxis, np.newaxis],
         error,
         np.zeros(n, dtype=bool),
         np.zeros(n, dtype=bool),
@@ -308,17 +308,15 @@ def _part(
     return Part(np.array([way.element]), contacts, pickup, skins, way.behind, names, way.shared)
 
 
-def _shares(f: int, way: Way, rows: Sequence[int], found: tuple[Array, Array, Array, Array] | None) -> Array:
+def _shares(f: int, found: tuple[Array, Array, Array, Array] | None) -> Array:
     """Shares of HELD_BACK_BY for one element, from the channel that moves it most."""
     held = np.zeros(len(HELD_BACK_BY))
     if found is None:
         return held
-    channel, ceiling, inventory, metal = found
-    limits = [k.limit for c, k in way.carriers if c == rows[int(channel[f])]]
+    _, ceiling, inventory, metal = found
     held[HELD_BACK_BY.index("ceiling")] = ceiling[f]
     held[HELD_BACK_BY.index("inventory")] = inventory[f]
-    wetted = "wetting" not in limits and "inventory" not in limits
-    held[HELD_BACK_BY.index("melt transfer" if wetted else "wetting")] += metal[f]
+    held[HELD_BACK_BY.index("melt transfer")] = metal[f]
     rest = 1.0 - ceiling[f] - inventory[f] - metal[f]
-    held[HELD_BACK_BY.index("gas film")] += max(rest, 0.0)
+    held[HELD_BACK_BY.index("gas film")] = max(rest, 0.0)
     return held

@@ -364,9 +364,9 @@ def _named_for_wetting(shares: Array, ledger: Array, setting: Setting) -> Array:
     shut = np.array([_unwetted(contact, setting) for contact in setting.choice.contacts])
     moved = np.abs(np.median(ledger[: len(shut)], axis=-1))
     gate, stirring = HELD_BACK_BY.index("wetting"), HELD_BACK_BY.index("melt transfer")
-    side, named = shares[gate] + shares[stirring], shares.copy()
     held = shut[np.argmax(moved, axis=0)]
-    named[gate], named[stirring] = np.where(held, side, 0.0), np.where(held, 0.0, side)
+    named = shares.copy()
+    named[gate, held], named[stirring, held] = shares[stirring, held], 0.0
     return named
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Mapping
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import replace
 
 import numpy as np
@@ -39,16 +39,11 @@ def watched(setting: Setting) -> dict[str, tuple[Array, float]]:
 def host_compounds(setting: Setting) -> dict[str, tuple[Skin, tuple[Found, ...]]]:
     """Return, for each impurity of a solid, the compound with the host that saturates first."""
     first: dict[int, tuple[float, str]] = {}
-    for formula in _compounds(setting):
-        nu = stoichiometry(setting, formula)
-        if nu is None or np.count_nonzero(nu) != 1 or setting.host not in atoms(formula):
-            continue
+    for formula, i, count in _with_host(setting):
         energy = dissolution(setting, formula, "solid", Draws.nominal())
-        if isinstance(energy, Gap):
-            continue
-        i = int(np.flatnonzero(nu)[0])
-        top = float(energy.value.max()) / float(nu[i])
-        first[i] = min(first.get(i, (np.inf, "")), (top, formula))
+        if not isinstance(energy, Gap):
+            top = float(energy.value.max()) / count
+            first[i] = min(first.get(i, (np.inf, "")), (top, formula))
     return {formula: skin(setting, formula) for _, formula in first.values()}
 
 
@@ -74,21 +69,17 @@ def capped(setting: Setting, made: tuple[Carrier, tuple[Found, ...]]) -> tuple[C
     held = np.flatnonzero(own.nu)
     if not setting.liquid or len(held) < 2:
         return made
+    covers = [(formula, i, count) for formula, i, count in _with_host(setting) if i in held]
+    if len({i for _, i, _ in covers}) < len(held):
+        return made
     least: dict[int, Array] = {}
     used: tuple[Found, ...] = ()
-    for formula in _compounds(setting):
-        nu = stoichiometry(setting, formula)
-        if nu is None or np.count_nonzero(nu) != 1 or setting.host not in atoms(formula):
-            continue
-        i = int(np.flatnonzero(nu)[0])
-        if i not in held:
-            continue
+    for formula, i, count in covers:
         energy = dissolution(setting, formula, "solid")
-        if isinstance(energy, Gap):
-            continue
-        ln_x = energy.value / nu[i]
-        least[i] = np.minimum(least[i], ln_x) if i in least else ln_x
-        used += energy.found
+        if not isinstance(energy, Gap):
+            ln_x = energy.value / count
+            least[i] = np.minimum(least[i], ln_x) if i in least else ln_x
+            used += energy.found
     if len(least) < len(held):
         return made
     covered = np.all([least[int(i)] < np.log(DILUTE) for i in held], axis=0)
@@ -96,6 +87,15 @@ def capped(setting: Setting, made: tuple[Carrier, tuple[Found, ...]]) -> tuple[C
     if not np.any(top < own.ln_k.ln):
         return made
     return replace(own, ln_k=Curve(own.ln_k.T, np.minimum(own.ln_k.ln, top))), (*found, *used)
+
+
+def _with_host(setting: Setting) -> Iterator[tuple[str, int, float]]:
+    """Yield each compound of the host and one impurity, with that impurity and its atoms."""
+    for formula in _compounds(setting):
+        nu = stoichiometry(setting, formula)
+        if nu is not None and np.count_nonzero(nu) == 1 and setting.host in atoms(formula):
+            i = int(np.flatnonzero(nu)[0])
+            yield formula, i, float(nu[i])
 
 
 def _compounds(setting: Setting) -> list[str]:
